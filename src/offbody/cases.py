@@ -1,0 +1,845 @@
+"""Case files: what stands in the stream, what measures it, and which winds to survey.
+
+A case is a TOML file. Every key, with [] round what may be left out:
+
+    [title] = "text"             a heading for the summary and the pictures
+    length_unit = "m"            m, cm, mm, km, ft or in: the unit of EVERY length in the file
+
+    [stream]
+    bearings = "all"             where the wind comes FROM, clockwise from north (north is +y); or
+    directions = "all"           where the stream goes TO, counter-clockwise from +x
+                                 "all" is every degree (over a ground: both ways along it); else
+                                 a step, a list, or { from = 200, to = 280, step = 2 }
+    [prevailing_bearing]         one, or a list: the winds that the pictures show
+    [speed], [speed_unit]        of the undisturbed stream; only ever printed
+
+    [surroundings]               left out: an open stream
+    kind = "open" or "ground"
+    [y]                          height of the ground, 0 if left out
+
+    [[body]]
+    shape                        "circle"     diameter, [centre]
+                                 "ellipse"    length, thickness, [centre], [turned]
+                                 "rectangle"  width (along x), depth (along y), corner_radius,
+                                              [centre], [turned]
+                                 "polygon"    points, corner_radius, [turned], [moved]
+                                 "section"    code (four digits), chord, [nose], [turned]
+                                 "points"     file or points, [corner_radius] or [sharp],
+                                              [scaled], [turned], [moved]
+    [name]                       "body 1", "body 2" ... if left out
+    [drag_coefficient]           a number, or { bearings = [...], values = [...] }
+    [drag_reference]             the length it refers to; left out: the breadth across the stream
+    [circulation]                per unit speed of the stream, counter-clockwise positive
+    [axis]                       where booms count from; left out: the middle of the body
+
+    [[sensor]]
+    kind                         "point"         reads, a position
+                                 "disc"          reads, radius, a position (its centre)
+                                 "path"          start and end; or path_length, path_bearing, a
+                                                 position (its middle)
+                                 "crossed_paths" paths = [{ start, end }, ...]; or path_length,
+                                                 path_bearings, a position (their middle)
+                                 "wall_port"     body, arc_fraction
+    [name]                       "sensor 1", "sensor 2" ... if left out
+    reads                        "speed", "direction" or "both"
+    a position                   x and y; or a boom:
+    boom = { [body], bearing, length, from = "axis" or "face", [offset] }
+                                 bearing: where the boom points, seen from the body;
+                                 offset: of the instrument to the left of the boom's end;
+                                 body may be left out where there is only one
+
+    [panels]                     left out: laid by the library
+    [count]                      one number, or one per body
+    [order]                      1 to 16
+
+    [field]                      the region of the pictures and of the dense grid
+    [x], [y]                     [from, to], both; left out: round the bodies and the sensors
+    [spacing] or [points]        one length, or [along x, along y]
+    [bearing]                    one, or a list; left out: the prevailing wind, else the worst
+
+``turned`` is in degrees, counter-clockwise: about the centre, the nose, or the origin of the
+points. A case says its angles one way: with ``direction`` in place of ``bearing`` in every key,
+or the other way round, never both. Tables in an error message count from one: ``body[2]`` is
+the second ``[[body]]``.
+"""
+
+import contextlib
+import difflib
+import os
+import re
+import tomllib
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+from scipy.optimize import brentq
+
+import offbody as ob
+from offbody.checks import as_count, as_number, as_point, as_points, as_reals, nearest_name
+from offbody.errors import InputError
+
+LENGTH_UNITS = ("m", "cm", "mm", "km", "ft", "in")
+GRID_INTERVALS = 360  # along the longer side of the region, if the case does not say
+MOST_NODES = 20_000_000
+READINGS = ("speed", "direction", "both")
+
+# As in "the lee of body 0", "body 0 (circle ...)" and "bodies 0 (circle ...) and 1 (circle ...)".
+_COUNTED_BODY = re.compile(r"\b(?:body |bodies |(?P<before>and ))(?P<number>\d+)(?= \(|$)")
+
+
+@dataclass(frozen=True)
+class Body:
+    """One body of a case: its outline, and what the outline does not say."""
+
+    name: str
+    outline: object
+    axis: complex
+    wake: object
+    circulation: float | None
+
+
+@dataclass(frozen=True)
+class Region:
+    """Where the dense grid and the pictures lie, and for which winds; None: to be chosen."""
+
+    x: np.ndarray | None
+    y: np.ndarray | None
+    spacing: float | None
+    points: tuple[int, int] | None
+    angles: np.ndarray | None
+
+
+@dataclass(frozen=True)
+class Case:
+    """A case as read: angles stay in the case's own convention, told by ``by_bearing``."""
+
+    file: str
+    entries: dict = field(repr=False)
+    title: str
+    length_unit: str
+    speed: float | None
+    speed_unit: str | None
+    by_bearing: bool
+    angles: np.ndarray = field(repr=False)
+    prevailing: np.ndarray | None
+    surroundings: object
+    bodies: tuple[Body, ...]
+    sensors: tuple
+    booms: tuple
+    panels: object
+    order: int | None
+    region: Region
+
+    def directions(self, angles):
+        """Directions of the stream for angles in the case's own convention."""
+        return ob.from_bearing(angles) if self.by_bearing else angles
+
+    def in_its_names(self, sentence):
+        """A sentence of the library, which counts bodies from zero, in the case's own names."""
+        return _COUNTED_BODY.sub(
+            lambda found: (found["before"] or "") + self.bodies[int(found["number"])].name, sentence
+        )
+
+    def solve(self):
+        """The solved model of the case's bodies in their surroundings."""
+        with _located(self.file, self.in_its_names):
+            return ob.solve(
+                [body.outline for body in self.bodies],
+                surroundings=self.surroundings,
+                panels=self.panels,
+                order=self.order,
+                circulation=[body.circulation for body in self.bodies],
+                wakes=[body.wake for body in self.bodies],
+            )
+
+    def survey(self, model):
+        """The survey of the case's sensors for the case's winds."""
+        if not self.sensors:
+            raise InputError(f"{self.file}: sensor: missing; a survey needs a [[sensor]]")
+        with _located(self.file, self.in_its_names):
+            if self.by_bearing:
+                return ob.survey(model, self.sensors, bearings=self.angles)
+            return ob.survey(model, self.sensors, directions=self.angles)
+
+    def grid_lines(self, model, winds=1):
+        """The lines (x, y) of the dense grid: as the case says, or round bodies and sensors."""
+        (x0, x1), (y0, y1) = self._box(model)
+        if self.region.points:
+            along_x, along_y = self.region.points
+        else:
+            spacing = self.region.spacing or max(x1 - x0, y1 - y0) / GRID_INTERVALS
+            along_x, along_y = (
+                1 + max(1, round(min(side / spacing, MOST_NODES))) for side in (x1 - x0, y1 - y0)
+            )
+        if along_x * along_y * winds > MOST_NODES:
+            raise InputError(
+                f"{self.file}: field: at least {along_x} by {along_y} nodes for {winds} winds are "
+                f"more than {MOST_NODES}; widen the spacing, or show fewer winds"
+            )
+        return np.linspace(x0, x1, along_x), np.linspace(y0, y1, along_y)
+
+    def _box(self, model):
+        """The region as ranges of x and of y."""
+        if self.region.x is not None:
+            return self.region.x, self.region.y
+        xmin, xmax, ymin, ymax = model.extent
+        places = [sensor.points for sensor in self.sensors if sensor.kind != "port"]
+        places = np.concatenate([[[xmin, ymin], [xmax, ymax]], *places])
+        low, high = places.min(axis=0), places.max(axis=0)
+        size = max(high - low)
+        # A body alone is seen with its own size all round; a long row of things is not a strip.
+        margin = 0.2 * size + max(xmax - xmin, ymax - ymin) * (0.8 if not self.sensors else 0.3)
+        lean = np.maximum(0.3 * size - (high - low) / 2, 0.0)
+        low, high = low - margin - lean, high + margin + lean
+        if isinstance(self.surroundings, ob.Ground):
+            low[1] = self.surroundings.y
+        return np.stack([low, high], axis=-1)
+
+
+def read_case(path):
+    """The case that a TOML file describes.
+
+    Parameters
+    ----------
+    path : str or path-like
+        The case file; see the head of this module for its keys.
+
+    Returns
+    -------
+    Case
+
+    Raises
+    ------
+    ob.InputError
+        For a file that is missing, not UTF-8 or not TOML, and for a key that is missing,
+        unknown or of the wrong kind: with the file, the key and what was expected.
+    """
+    reading = _Reading(Path(path))
+    top = _Table(reading, "", _read_entries(Path(path)))
+    title = top.text("title", Path(path).stem)
+    length_unit = top.choice("length_unit", LENGTH_UNITS)
+    reading.surroundings = _surroundings(top.table("surroundings", optional=True))
+    angles, prevailing, speed, speed_unit = _stream(top.table("stream"))
+    bodies = _bodies(top)
+    sensors, booms = _sensors(top, bodies)
+    panels, order = _panels(top.table("panels", optional=True), len(bodies))
+    region = _region(top.table("field", optional=True))
+    top.close()
+    return Case(
+        file=os.fspath(path),
+        entries=top.entries,
+        title=title,
+        length_unit=length_unit,
+        speed=speed,
+        speed_unit=speed_unit,
+        by_bearing=reading.by_bearing,
+        angles=angles,
+        prevailing=prevailing,
+        surroundings=reading.surroundings,
+        bodies=bodies,
+        sensors=sensors,
+        booms=booms,
+        panels=panels,
+        order=order,
+        region=region,
+    )
+
+
+def _read_entries(path):
+    """The bare TOML of a case file."""
+    try:
+        raw = path.read_bytes()
+    except FileNotFoundError:
+        raise InputError(f"{path}: no such case file{_neighbour(path)}") from None
+    except OSError as error:
+        raise InputError(f"{path}: cannot read the case file: {error.strerror}") from None
+    try:
+        return tomllib.loads(raw.decode("utf-8-sig"))
+    except UnicodeDecodeError as error:
+        line = raw.count(b"\n", 0, error.start) + 1
+        raise InputError(f"{path}: line {line}: not UTF-8; save the file as UTF-8") from None
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(f"{path}: not valid TOML: {error}") from None
+
+
+def _neighbour(path):
+    """A hint at the file of nearly the same name beside a missing one, or nothing."""
+    try:
+        beside = [entry.name for entry in path.parent.iterdir()]
+    except OSError:
+        return ""
+    close = difflib.get_close_matches(path.name, beside, n=1, cutoff=0.6)
+    return f"; did you mean {str(path.parent / close[0])!r}?" if close else ""
+
+
+@contextlib.contextmanager
+def _located(place, worded=str):
+    """Put the place in the case file in front of the library's own complaints."""
+    try:
+        yield
+    except InputError as error:
+        raise InputError(f"{place}: {worded(str(error))}") from None
+
+
+class _Reading:
+    """What the tables of one case share: its file, its surroundings, how its angles are said."""
+
+    def __init__(self, file):
+        self.file = file
+        self.surroundings = None
+        self.by_bearing = None
+        self.first_angle = None
+
+    def settle(self, place, by_bearing):
+        """Note the first angle's convention, and refuse any later angle of the other one."""
+        if self.by_bearing is None:
+            self.by_bearing, self.first_angle = by_bearing, place
+        elif self.by_bearing != by_bearing:
+            words = "bearing", "direction"
+            this, other = words if by_bearing else words[::-1]
+            raise InputError(
+                f"{self.file}: {place}: a {this} in a case that gives {self.first_angle}, a "
+                f"{other}; say every angle of a case one way"
+            )
+
+    def directions(self, angles):
+        """Directions of the stream for angles in the case's own convention."""
+        return ob.from_bearing(angles) if self.by_bearing else angles
+
+    def heading(self, angle):
+        """The unit vector, as a complex number, that points along a bearing or direction."""
+        return np.exp(1j * np.radians(90.0 - angle if self.by_bearing else angle))
+
+
+class _Table:
+    """One table of the case. It notes each key that is asked for, so the rest are unknown."""
+
+    def __init__(self, reading, path, entries):
+        self.reading = reading
+        self.path = path
+        self.entries = entries
+        self.asked = set()
+
+    def key_path(self, key):
+        return f"{self.path}.{key}" if self.path else key
+
+    def place(self, key):
+        return f"{self.reading.file}: {self.key_path(key)}"
+
+    def error(self, key, complaint):
+        return InputError(f"{self.place(key)}: {complaint}")
+
+    def located(self):
+        """Library complaints inside this block are about this table."""
+        return _located(f"{self.reading.file}: {self.path}")
+
+    def has(self, key):
+        self.asked.add(key)
+        return key in self.entries
+
+    def missing(self, expected, *keys):
+        """The error for a missing key, or for the misspelt one that was meant for it."""
+        for unread in self.entries.keys() - self.asked:
+            if meant := difflib.get_close_matches(unread, keys, n=1, cutoff=0.75):
+                return self.error(unread, f"unknown key; did you mean {meant[0]!r}?")
+        return self.error(" or ".join(keys), f"missing; expected {expected}")
+
+    def take(self, key, expected):
+        if not self.has(key):
+            raise self.missing(expected, key)
+        return self.entries[key]
+
+    def close(self):
+        """Refuse what nobody asked for."""
+        for key in self.entries:
+            if key not in self.asked:
+                raise self.error(key, f"unknown key; {nearest_name(key, self.asked)}")
+
+    def number(self, key, *default, **limits):
+        if default and not self.has(key):
+            return default[0]
+        return as_number(self.place(key), self.take(key, "a number"), **limits)
+
+    def text(self, key, *default):
+        if default and not self.has(key):
+            return default[0]
+        value = self.take(key, "a text in quotes")
+        if not isinstance(value, str) or not value.strip():
+            raise self.error(key, f"expected a text in quotes, got {value!r}")
+        return value
+
+    def choice(self, key, known, *default):
+        if default and not self.has(key):
+            return default[0]
+        value = self.take(key, "one of " + ", ".join(repr(word) for word in known))
+        if value not in known:
+            raise self.error(key, f"{value!r} is not known; {nearest_name(value, known)}")
+        return value
+
+    def point(self, key, *default):
+        if default and not self.has(key):
+            return default[0]
+        return as_point(self.place(key), self.take(key, "a point [x, y]"))
+
+    def points(self, key):
+        value = as_points(self.place(key), self.take(key, "points [[x, y], ...]"))
+        if value.ndim != 2:
+            raise self.error(key, "expected points [[x, y], ...]")
+        return value
+
+    def span(self, key):
+        """A range [from, to] that runs upward."""
+        value = as_reals(self.place(key), self.take(key, "a range [from, to]"))
+        if value.shape != (2,) or value[0] >= value[1]:
+            raise self.error(key, f"expected a range [from, to] that runs upward, got "
+                                  f"{self.entries[key]!r}")
+        return value
+
+    def table(self, key, optional=False):
+        """A sub-table; an empty one where it is optional and left out."""
+        if optional and not self.has(key):
+            return _Table(self.reading, self.key_path(key), {})
+        value = self.take(key, f"a table [{key}]")
+        if not isinstance(value, dict):
+            raise self.error(key, f"expected a table, got {value!r}")
+        return _Table(self.reading, self.key_path(key), value)
+
+    def tables(self, key):
+        """The sub-tables of an array of tables, counted from one in messages."""
+        if not self.has(key):
+            return []
+        value = self.entries[key]
+        if not isinstance(value, list) or not all(isinstance(entry, dict) for entry in value):
+            raise self.error(key, f"expected an array of tables; write [[{key}]] above each")
+        return [
+            _Table(self.reading, f"{self.key_path(key)}[{number}]", entry)
+            for number, entry in enumerate(value, start=1)
+        ]
+
+    def angle_key(self, pattern, expected, optional=False):
+        """Whichever of the two names of an angle the case uses, or None if left out."""
+        names = [pattern.format(word) for word in ("bearing", "direction")]
+        given = [name for name in names if self.has(name)]
+        if len(given) == 2:
+            raise self.error(
+                given[1], f"given beside {given[0]!r}; say every angle of a case one way"
+            )
+        if not given:
+            if optional:
+                return None
+            raise self.missing(expected, *names)
+        self.reading.settle(self.key_path(given[0]), by_bearing=given[0] == names[0])
+        return given[0]
+
+    def angle(self, pattern="{}", optional=False):
+        """One angle in degrees, in the case's own convention."""
+        key = self.angle_key(pattern, "an angle in degrees", optional)
+        return None if key is None else self.number(key, least=-360.0, greatest=360.0)
+
+    def wind(self, pattern, optional=False):
+        """Angles of the stream, a list or one, which the surroundings must admit."""
+        key = self.angle_key(pattern, "an angle in degrees, or a list", optional)
+        if key is None:
+            return None
+        if isinstance(self.entries[key], list):
+            return self.admitted(key, self.angle_list(key))
+        return self.admitted(key, np.array([self.angle(pattern)]))
+
+    def admitted(self, key, angles):
+        """The same angles, if the surroundings admit a stream from there."""
+        try:
+            self.reading.surroundings.admit(self.reading.directions(angles))
+        except InputError as error:
+            mend = " (bearing 270 or 90)" if self.reading.by_bearing else ""
+            raise self.error(key, f"{error}{mend}") from None
+        return angles
+
+    def angle_list(self, key):
+        """A list of different angles in degrees."""
+        value = as_reals(self.place(key), self.entries[key])
+        if value.ndim != 1 or not value.size:
+            raise self.error(key, "expected a list of angles in degrees")
+        if np.abs(value).max() > 360.0:
+            raise self.error(key, f"angles run from -360 to 360 degrees, got {value.tolist()}")
+        if len(np.unique(value % 360.0)) < value.size:
+            raise self.error(key, "the same angle is given twice")
+        return value
+
+
+def _surroundings(section):
+    kind = section.choice("kind", ("open", "ground"), "open")
+    if kind == "ground":
+        y = section.number("y", 0.0)
+        section.close()
+        return ob.Ground(y)
+    section.close()
+    return ob.OpenStream()
+
+
+def _stream(section):
+    key = section.angle_key("{}s", 'angles: "all", a step, a list or { from, to, step }')
+    angles = section.admitted(key, _angles(section, key))
+    prevailing = section.wind("prevailing_{}", optional=True)
+    speed = speed_unit = None
+    if section.has("speed") or section.has("speed_unit"):
+        speed = section.number("speed", positive=True)
+        speed_unit = section.text("speed_unit")
+    section.close()
+    return angles, prevailing, speed, speed_unit
+
+
+def _angles(section, key):
+    value = section.entries[key]
+    if isinstance(value, str):
+        section.choice(key, ("all",))
+        if isinstance(section.reading.surroundings, ob.Ground):
+            along = np.array([0.0, 180.0])
+            return ob.to_bearing(along) if section.reading.by_bearing else along
+        return np.arange(360.0)
+    if isinstance(value, dict):
+        return _angle_range(section.table(key))
+    if isinstance(value, list):
+        return section.angle_list(key)
+    step = section.number(key, positive=True)
+    count = round(360.0 / step)
+    if count < 1 or abs(count * step - 360.0) > 1e-9 * 360.0:
+        raise section.error(key, f"a step must divide 360 degrees evenly, got {value!r}")
+    return np.arange(count) * (360.0 / count)
+
+
+def _angle_range(section):
+    """From one angle to another, both included, the short way or over 360 as the step says."""
+    start = section.number("from", least=-360.0, greatest=360.0)
+    stop = section.number("to", least=-360.0, greatest=360.0)
+    step = section.number("step", positive=True)
+    section.close()
+    sweep = stop - start if stop > start else stop - start + 360.0
+    if sweep > 360.0:
+        raise section.error("to", f"{start:g} to {stop:g} is more than a full turn")
+    # The slack keeps the last angle where the step, not exact in binary, just overshoots it.
+    angles = (start + np.arange(np.floor(sweep / step + 1e-9) + 1) * step) % 360.0
+    return angles[:-1] if len(angles) > 1 and angles[-1] == angles[0] else angles
+
+
+def _bodies(top):
+    sections = top.tables("body")
+    if not sections:
+        raise top.missing("at least one [[body]]", "body")
+    bodies = tuple(_body(section, number) for number, section in enumerate(sections, start=1))
+    _refuse_namesakes(sections, [body.name for body in bodies])
+    return bodies
+
+
+def _refuse_namesakes(sections, names):
+    for section, name in zip(sections, names, strict=True):
+        if names.count(name) > 1:
+            raise section.error("name", f"{name!r} is given twice; names must differ")
+
+
+def _body(section, number):
+    shape = section.choice("shape", tuple(_SHAPES))
+    name = section.text("name", f"body {number}")
+    axis = section.point("axis", None)
+    circulation = section.number("circulation", None)
+    wake = _wake(section)
+    outline, middle = _SHAPES[shape](section)
+    if axis is None:
+        axis = _centroid(outline) if middle is None else middle
+    return Body(name, outline, complex(*axis), wake, circulation)
+
+
+def _wake(section):
+    if not section.has("drag_coefficient"):
+        if section.has("drag_reference"):
+            raise section.missing("a number, beside drag_reference", "drag_coefficient")
+        return None
+    reference = section.number("drag_reference", None, positive=True)
+    value = section.entries["drag_coefficient"]
+    if isinstance(value, dict):
+        drag_coefficient = _drag_table(section.table("drag_coefficient"))
+    else:
+        drag_coefficient = section.number("drag_coefficient", least=0.0)
+    with section.located():
+        return ob.Wake(drag_coefficient, reference=reference)
+
+
+def _drag_table(section):
+    """The drag coefficients as ``ob.Wake`` takes them, against the stream's direction."""
+    key = section.angle_key("{}s", "a list of angles in degrees")
+    angles = section.angle_list(key)
+    values = as_reals(section.place("values"), section.take("values", "a list of numbers"))
+    section.close()
+    if values.shape != angles.shape:
+        raise section.error("values", f"expected {angles.size} numbers, one for each of {key}")
+    return dict(zip(section.reading.directions(angles).tolist(), values.tolist(), strict=True))
+
+
+def _placed(section, key="centre"):
+    """Where a shape stands and how it is turned there, once nothing unknown is left over."""
+    place, turned = section.point(key, np.zeros(2)), section.number("turned", 0.0)
+    section.close()
+    return place, turned
+
+
+def _circle(section):
+    diameter = section.number("diameter", positive=True)
+    centre = section.point("centre", np.zeros(2))
+    section.close()
+    with section.located():
+        return ob.circle(diameter, centre), centre
+
+
+def _ellipse(section):
+    length = section.number("length", positive=True)
+    thickness = section.number("thickness", positive=True)
+    centre, turned = _placed(section)
+    with section.located():
+        return ob.ellipse(length, thickness, centre, turned), centre
+
+
+def _rectangle(section):
+    width = section.number("width", positive=True)
+    depth = section.number("depth", positive=True)
+    corner_radius = section.number("corner_radius", positive=True)
+    centre, turned = _placed(section)
+    corners = np.array([[-width, -depth], [width, -depth], [width, depth], [-width, depth]]) / 2
+    with section.located():
+        return ob.polygon(corners, corner_radius).turned(turned).moved(*centre), centre
+
+
+def _polygon(section):
+    points = section.points("points")
+    corner_radius = section.number("corner_radius", positive=True)
+    place, turned = _placed(section, "moved")
+    with section.located():
+        return ob.polygon(points, corner_radius).turned(turned).moved(*place), None
+
+
+def _section(section):
+    code = section.text("code")
+    chord = section.number("chord", positive=True)
+    nose, turned = _placed(section, "nose")
+    with section.located():
+        return ob.four_digit(code, chord).turned(turned).moved(*nose), None
+
+
+def _points(section):
+    path = _outline_file(section) if section.has("file") else None
+    points = None if path else section.points("points")
+    corner_radius = section.number("corner_radius", None, positive=True)
+    sharp = as_count(section.place("sharp"), section.entries["sharp"], least=0) if (
+        section.has("sharp")) else None
+    scaled = section.number("scaled", 1.0, positive=True)
+    place, turned = _placed(section, "moved")
+    if corner_radius is not None and sharp is not None:
+        raise section.error("sharp", "given beside 'corner_radius'; an outline has one or none")
+    with section.located():
+        if path:
+            drawn = ob.read_outline(path, corner_radius=corner_radius, sharp=sharp)
+        elif corner_radius is not None:
+            drawn = ob.polygon(points, corner_radius)
+        else:
+            drawn = ob.outline(points, sharp=sharp)
+        return drawn.scaled(scaled).turned(turned).moved(*place), None
+
+
+def _outline_file(section):
+    """The path of a file of points, which the case names relative to itself."""
+    if section.has("points"):
+        raise section.error("points", "given beside 'file'; give the one or the other")
+    path = section.reading.file.parent / section.text("file")
+    if not path.is_file():
+        raise section.error("file", f"no such file {str(path)!r}{_neighbour(path)}")
+    return path
+
+
+_SHAPES = {
+    "circle": _circle,
+    "ellipse": _ellipse,
+    "rectangle": _rectangle,
+    "polygon": _polygon,
+    "section": _section,
+    "points": _points,
+}
+
+
+def _centroid(outline):
+    """The centre of the area, to about a millionth of the size: a polygon's own formula."""
+    x, y = outline.points(4000).T
+    next_x, next_y = np.roll(x, -1), np.roll(y, -1)
+    cross = x * next_y - next_x * y
+    return np.array([np.sum((x + next_x) * cross), np.sum((y + next_y) * cross)]) / (
+        3.0 * np.sum(cross)
+    )
+
+
+def _sensors(top, bodies):
+    sections = top.tables("sensor")
+    mounted = [_sensor(section, bodies, n) for n, section in enumerate(sections, start=1)]
+    _refuse_namesakes(sections, [sensor.name for sensor, _ in mounted])
+    return tuple(sensor for sensor, _ in mounted), tuple(boom for _, boom in mounted)
+
+
+def _sensor(section, bodies, number):
+    """A sensor, and the polyline of its boom or None."""
+    kind = section.choice("kind", tuple(_KINDS))
+    name = section.text("name", f"sensor {number}")
+    return _KINDS[kind](section, bodies, name)
+
+
+def _point_sensor(section, bodies, name):
+    reads = section.choice("reads", READINGS)
+    (x, y), boom = _position(section, bodies)
+    section.close()
+    with section.located():
+        return ob.PointSensor(x, y, name=name, reads=reads), boom
+
+
+def _disc_sensor(section, bodies, name):
+    reads = section.choice("reads", READINGS)
+    radius = section.number("radius", positive=True)
+    centre, boom = _position(section, bodies)
+    section.close()
+    with section.located():
+        return ob.DiscSensor(centre, radius, name=name, reads=reads), boom
+
+
+def _path_sensor(section, bodies, name):
+    if section.has("start") or section.has("end"):
+        start, end = section.point("start"), section.point("end")
+        section.close()
+        with section.located():
+            return ob.PathSensor(start, end, name=name), None
+    length = section.number("path_length", positive=True)
+    angle = section.angle("path_{}")
+    middle, boom = _position(section, bodies)
+    section.close()
+    with section.located():
+        return ob.PathSensor(*_path(section, middle, length, angle), name=name), boom
+
+
+def _crossed_paths(section, bodies, name):
+    if section.has("paths"):
+        ends = []
+        for path in section.tables("paths"):
+            ends.append((path.point("start"), path.point("end")))
+            path.close()
+        boom = None
+    else:
+        length = section.number("path_length", positive=True)
+        angles = section.angle_list(section.angle_key("path_{}s", "a list of angles in degrees"))
+        middle, boom = _position(section, bodies)
+        ends = [_path(section, middle, length, angle) for angle in angles]
+    section.close()
+    with section.located():
+        return ob.CrossedPaths([ob.PathSensor(*pair) for pair in ends], name=name), boom
+
+
+def _path(section, middle, length, angle):
+    heading = section.reading.heading(angle)
+    half = np.array([heading.real, heading.imag]) * length / 2.0
+    return middle - half, middle + half
+
+
+def _wall_port(section, bodies, name):
+    body = _index_of_body(section, bodies)
+    arc_fraction = section.number("arc_fraction", least=0.0, greatest=1.0)
+    section.close()
+    with section.located():
+        return ob.WallPort(body, arc_fraction, name=name), None
+
+
+_KINDS = {
+    "point": _point_sensor,
+    "disc": _disc_sensor,
+    "path": _path_sensor,
+    "crossed_paths": _crossed_paths,
+    "wall_port": _wall_port,
+}
+
+
+def _index_of_body(section, bodies):
+    names = [body.name for body in bodies]
+    if len(names) == 1 and not section.has("body"):
+        return 0
+    return names.index(section.choice("body", names))
+
+
+def _position(section, bodies):
+    """Where a sensor stands, and the polyline of its boom or None."""
+    if not section.has("boom"):
+        if not (section.has("x") or section.has("y")):
+            raise section.missing("a position: x and y, or a boom", "boom", "x", "y")
+        return np.array([section.number("x"), section.number("y")]), None
+    for key in ("x", "y"):
+        if section.has(key):
+            raise section.error(key, "given beside 'boom'; a position is said one way")
+    boom = section.table("boom")
+    body = bodies[_index_of_body(boom, bodies)]
+    heading = section.reading.heading(boom.angle())
+    length = boom.number("length", positive=True)
+    origin = boom.choice("from", ("axis", "face"))
+    offset = boom.number("offset", 0.0)
+    boom.close()
+    if origin == "face":
+        length += _depth_of_wall(boom, body, heading)
+    tip = body.axis + length * heading
+    place = tip + 1j * heading * offset
+    line = np.array([body.axis, tip, place])
+    return np.array([place.real, place.imag]), np.stack([line.real, line.imag], axis=-1)
+
+
+def _depth_of_wall(boom, body, heading):
+    """How far from its axis the ray along a boom leaves a body."""
+
+    def along(s):
+        return (body.outline.position(np.asarray(s) % 1.0) - body.axis) / heading
+
+    s = np.linspace(0.0, 1.0, 2001)
+    below = along(s).imag < 0
+    roots = [
+        brentq(lambda s: along(s).imag, s[k], s[k + 1], xtol=1e-15)
+        for k in np.flatnonzero(below[:-1] != below[1:])
+    ]
+    depths = [depth for depth in (float(along(root).real) for root in roots) if depth > 0]
+    if len(depths) % 2 == 0:
+        raise boom.error(
+            "from",
+            f'"face" needs an axis inside the body, and ({body.axis.real:g}, {body.axis.imag:g}) '
+            f"is outside {body.name!r}; give the body an axis, or count from the axis",
+        )
+    return min(depths)
+
+
+def _panels(section, bodies):
+    count = order = None
+    if section.has("count"):
+        value = section.entries["count"]
+        if isinstance(value, list):
+            if len(value) != bodies:
+                raise section.error("count", f"expected one number per body, {bodies} in all")
+            count = [as_count(section.place("count"), each, least=1) for each in value]
+        else:
+            count = as_count(section.place("count"), value, least=1)
+    if section.has("order"):
+        order = as_count(section.place("order"), section.entries["order"], least=1, greatest=16)
+    section.close()
+    return count, order
+
+
+def _region(section):
+    x = y = spacing = points = None
+    if section.has("x") or section.has("y"):
+        x, y = section.span("x"), section.span("y")
+    if section.has("points"):
+        if section.has("spacing"):
+            raise section.error("points", "given beside 'spacing'; give the one or the other")
+        value = section.entries["points"]
+        if not isinstance(value, list) or len(value) != 2:
+            raise section.error("points", f"expected [along x, along y], got {value!r}")
+        points = tuple(as_count(section.place("points"), each, least=2) for each in value)
+    else:
+        spacing = section.number("spacing", None, positive=True)
+    angles = section.wind("{}", optional=True)
+    section.close()
+    return Region(x, y, spacing, points, angles)

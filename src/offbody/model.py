@@ -1,0 +1,749 @@
+"""The solved flow about a set of bodies, and everything that can be asked of it.
+
+The tangential velocity just inside every wall is zero. With walls counter-clockwise, W = g conj(T)
+on the wall, g = gamma + i v and the known outward normal velocity v:
+
+    Re(T W_onset) + (tangential influence) gamma + (that of the sources) v - gamma = 0,
+
+the influence being the outer limit, gamma the jump. On each body the mean of gamma is added to the
+rows, which fixes the circulation that this equation leaves free. Rows and columns are scaled by the
+square roots of the arc-length weights. One LU factorisation serves the two unit onset directions,
+unit circulation of each body that has any, and the wake of every direction.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.polynomial import legendre
+from scipy.linalg import lu_factor, lu_solve
+from scipy.optimize import brentq
+
+from offbody import flow
+from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
+from offbody.errors import InputError
+from offbody.outlines import Outline
+from offbody.panels import lay
+from offbody.surroundings import Ground, OpenStream
+from offbody.tracing import trace
+from offbody.wakes import Wake, profile
+
+DEFAULT_ORDER = 16
+BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way
+
+
+def solve(outlines, surroundings=None, panels=None, order=None, circulation=None, wakes=None):
+    """The potential flow about one or several bodies, ready for any direction.
+
+    Parameters
+    ----------
+    outlines : Outline or sequence of Outline
+        The bodies, clear of one another.
+    surroundings : OpenStream or Ground, optional
+        What stands round them; an open stream unless given.
+    panels : int or sequence, optional
+        Panels per body (one number for each, or one for all; None within a sequence lets the
+        program choose). None: laid by curvature, edges, and distance to other walls.
+    order : int, optional
+        Nodes and terms per panel, 1 (straight, constant strength) to 16. None: 16, which
+        ``bench/formulations.py`` finds to be the quickest way to each accuracy.
+    circulation : float or sequence, optional
+        Per body, counter-clockwise positive, for unit onset speed. None: the Kutta condition where
+        the body has a sharp edge, else zero.
+    wakes : Wake or sequence, optional
+        Per body, None or the wake whose displacement is to be included.
+
+    Returns
+    -------
+    Model
+
+    Raises
+    ------
+    InputError
+        If bodies overlap, touch or reach below the ground, or an argument does not fit.
+
+    References
+    ----------
+    J. Helsing and R. Ojala, J. Comput. Phys. 227 (2008) 2899-2921, for closed forms on curved
+    panels; J. Bremer, J. Comput. Phys. 231 (2012) 1879-1899, for the square-root weights.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> model = ob.solve(ob.circle(diameter=0.3))
+    >>> round(float(model.velocity((-1.5, 0.0))[0]), 4)       # five diameters upstream
+    0.99
+    """
+    bodies = _as_outlines(outlines)
+    surroundings = OpenStream() if surroundings is None else surroundings
+    if not isinstance(surroundings, (OpenStream, Ground)):
+        raise InputError(
+            f"surroundings = {surroundings!r}: give ob.OpenStream() or ob.Ground(y)"
+        )
+    order = DEFAULT_ORDER if order is None else as_count("order", order, least=1, greatest=16)
+    counts = [
+        None if count is None else as_count("panels", count, least=2)
+        for count in _per_body("panels", panels, len(bodies))
+    ]
+    circulations = [
+        None if given is None else as_number("circulation", given)
+        for given in _per_body("circulation", circulation, len(bodies))
+    ]
+    wakes = _per_body("wakes", wakes, len(bodies))
+    for wake in wakes:
+        if wake is not None and not isinstance(wake, Wake):
+            raise InputError(f"wakes must hold ob.Wake(...) or None, got {wake!r}")
+    return Model(bodies, surroundings, counts, order, circulations, wakes)
+
+
+def inside(bodies, points):
+    """Which points lie inside a body; a point on a wall does not.
+
+    Parameters
+    ----------
+    bodies : Model, Outline or sequence of Outline
+    points : (..., 2) array
+        In the caller's unit of length.
+
+    Returns
+    -------
+    (...,) bool array, or bool for one point
+
+    Raises
+    ------
+    InputError
+        If points do not have shape (..., 2) or are not finite.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> ob.inside(ob.circle(2.0), [(0.5, 0.0), (1.5, 0.0)])
+    array([ True, False])
+    """
+    points = as_points("points", points)
+    if isinstance(bodies, Model):
+        laid = bodies._panels
+    else:
+        outlines = _as_outlines(bodies)
+        laid, _ = lay(outlines, OpenStream(), [None] * len(outlines), DEFAULT_ORDER)
+    found = flow.enclosing_body(laid, _complex(points).ravel()) >= 0
+    return found.reshape(points.shape[:-1]) if points.ndim > 1 else bool(found[0])
+
+
+@dataclass(frozen=True)
+class SurfaceFlow:
+    """The flow along one wall, at the panels' nodes, counter-clockwise.
+
+    Attributes
+    ----------
+    points : (n, 2) array
+    arc : (n,) array
+        Arc length from the outline's first point, counter-clockwise, in the caller's unit.
+    speed : (n,) or (directions, n) array
+        Along the outline, positive counter-clockwise, over the onset speed.
+    pressure_coefficient : same shape
+        1 - speed^2; NaN in the lee of a body with a wake, where it means nothing.
+    """
+
+    points: np.ndarray
+    arc: np.ndarray
+    speed: np.ndarray
+    pressure_coefficient: np.ndarray
+
+
+class Model:
+    """A solved flow; ``offbody.solve`` makes it. All lengths in the caller's unit, speeds over the
+    onset speed, ``direction`` in degrees, where the stream goes to, counter-clockwise from +x: one
+    number, or a vector that adds a leading axis to every result.
+
+    Attributes
+    ----------
+    outlines : tuple of Outline
+    surroundings : OpenStream or Ground
+    wakes : tuple of Wake or None
+    order, node_count : int
+    panel_counts : tuple of int, per body
+    """
+
+    def __init__(self, outlines, surroundings, counts, order, circulations, wakes):
+        self.outlines, self.surroundings = tuple(outlines), surroundings
+        self.order, self.wakes = order, tuple(wakes)
+        self._panels, self._arcs = lay(outlines, surroundings, counts, order)
+        self._lengths = [wall.length for wall in self._arcs]
+        if order == 1:
+            self._lengths = [
+                self._panels.weights[self._panels.node_slice(b)].sum()
+                for b in range(len(outlines))
+            ]
+        self._prescribed = tuple(circulations)
+        self._factorise()
+
+    @property
+    def node_count(self):
+        """The number of nodes of all bodies."""
+        return len(self._panels.nodes)
+
+    @property
+    def panel_counts(self):
+        """The number of panels of each body."""
+        return tuple(int(n) for n in np.diff(self._panels.starts))
+
+    @property
+    def walls(self):
+        """(n, 2) wall points of each body, counter-clockwise."""
+        panels = self._panels
+        return [_pairs(panels.nodes[panels.node_slice(b)]) for b in range(panels.bodies)]
+
+    @property
+    def extent(self):
+        """(xmin, xmax, ymin, ymax) of all bodies."""
+        boxes = self._panels.boxes
+        return (boxes[:, 0].min(), boxes[:, 1].max(), boxes[:, 2].min(), boxes[:, 3].max())
+
+    # --- the equation -----------------------------------------------------------------------
+
+    def _factorise(self):
+        panels = self._panels
+        tangential, _, source = flow.wall_influence(panels, self.surroundings)
+        self._source_tangential = source if any(self.wakes) else None
+        tangential[np.diag_indices_from(tangential)] -= 1.0
+        for body, length in enumerate(self._lengths):
+            part = panels.node_slice(body)
+            tangential[part, part] -= panels.weights[part] / length
+        self._root = np.sqrt(panels.weights)
+        self._factors = lu_factor(
+            tangential * (self._root[:, None] / self._root), overwrite_a=True, check_finite=False
+        )
+        tangents = panels.tangents
+        self._unit = self._unknown(-np.stack([tangents.real, tangents.imag]))
+        free = [
+            body for body, given in enumerate(self._prescribed)
+            if given not in (None, 0.0) or (given is None and self._has_edge(body))
+        ]
+        self._turning = free
+        self._spin = np.zeros((len(free), self.node_count))
+        if free:
+            right = np.zeros((len(free), self.node_count))
+            for row, body in enumerate(free):
+                right[row, panels.node_slice(body)] = -1.0 / self._lengths[body]
+            self._spin = self._unknown(right)
+
+    def _unknown(self, right):
+        """gamma (R, N) for right-hand sides (R, N)."""
+        scaled = (right * self._root).T
+        return lu_solve(self._factors, scaled, check_finite=False).T / self._root
+
+    def _has_edge(self, body):
+        return self.outlines[body].edge is not None
+
+    def _kutta(self, gamma):
+        """(..., edges): the sum of the speeds at the two nodes nearest each free sharp edge."""
+        columns = []
+        for body in self._turning:
+            if self._prescribed[body] is None:
+                part = self._panels.node_slice(body)
+                columns.append(gamma[..., part.start] + gamma[..., part.stop - 1])
+        return np.stack(columns, axis=-1) if columns else np.zeros(gamma.shape[:-1] + (0,))
+
+    def _strengths(self, directions):
+        """Strengths for a vector of directions, as few rows as will do, and how to combine them.
+
+        Returns rows (R, N), real or complex, and either None (a row for each direction) or the
+        matrix (directions, R) that combines fields of the rows.
+        """
+        if any(self.wakes):
+            return self._with_wakes(directions), None
+        rows = np.concatenate([self._unit, self._spin])
+        combination = np.concatenate(
+            [_components(directions), self._circulations(directions, None)], axis=1
+        )
+        if len(directions) < len(rows):
+            return combination @ rows, None
+        return rows, combination
+
+    def _circulations(self, directions, wake_part):
+        """(directions, turning bodies): prescribed, or by the Kutta condition."""
+        result = np.zeros((len(directions), len(self._turning)))
+        edges = [k for k, b in enumerate(self._turning) if self._prescribed[b] is None]
+        for k, body in enumerate(self._turning):
+            if self._prescribed[body] is not None:
+                result[:, k] = self._prescribed[body]
+        if edges:
+            base = _components(directions) @ self._kutta(self._unit)
+            if wake_part is not None:
+                base = base + self._kutta(wake_part)
+            influence = self._kutta(self._spin)
+            base = base + result @ influence
+            result[:, edges] = -np.linalg.solve(influence[edges].T, base.T).T
+        return result
+
+    def _with_wakes(self, directions):
+        blown = self._wall_normal_speeds(directions)
+        moved = self._unknown(-(blown @ self._source_tangential.T))
+        gamma = _components(directions) @ self._unit + moved
+        gamma = gamma + self._circulations(directions, moved) @ self._spin
+        return gamma + 1j * blown
+
+    def _wall_normal_speeds(self, directions):
+        """(directions, N) outward normal speed on the walls."""
+        blown = np.zeros((len(directions), self.node_count))
+        for body, wake in enumerate(self.wakes):
+            if wake is None:
+                continue
+            part = self._panels.node_slice(body)
+            start, length = self._lee(body, directions)
+            fraction = (self._panels.arcs[part] - start[:, None]) % self._arcs[body].length
+            shape = profile(fraction, 0.0, length[:, None])
+            flux = (shape * self._panels.weights[part]).sum(axis=1)
+            blown[:, part] = shape * (0.5 * self._drag(body, directions) / flux)[:, None]
+        return blown
+
+    def _drag(self, body, directions):
+        """Drag per unit dynamic pressure and span, a length, of one body with a wake."""
+        wake = self.wakes[body]
+        reference = wake.reference or self._breadths(body, directions)
+        return wake.drag(directions) * reference
+
+    # --- places on the walls ----------------------------------------------------------------
+
+    def _widest_arcs(self, body, directions):
+        """(directions, 2) arc positions widest across the stream: on its left, on its right.
+
+        On a side that runs along the stream, its upstream end.
+        """
+        part = self._panels.node_slice(body)
+        nodes, tangents = self._panels.nodes[part], self._panels.tangents[part]
+        arcs, total = self._panels.arcs[part], self._arcs[body].length
+        stream = np.exp(1j * np.radians(directions))[:, None]
+        along, across = (nodes / stream).real, (nodes / stream).imag
+        crossing = (tangents / stream).imag
+        result = np.empty((len(directions), 2))
+        rows = np.arange(len(directions))
+        room = 1e-9 * np.ptp(across, axis=1)[:, None]
+        for side, sign in enumerate((1.0, -1.0)):
+            height = sign * across
+            ties = height >= height.max(axis=1, keepdims=True) - room
+            k = np.argmin(np.where(ties, along, np.inf), axis=1)
+            # The turning point lies before or after node k, by the sign of the slope there; the
+            # slope's linear interpolation finds it.
+            step = np.where(sign * crossing[rows, k] > 0.0, 1, -1)
+            other = (k + step) % len(nodes)
+            here, there = crossing[rows, k], crossing[rows, other]
+            gap = (arcs[other] - arcs[k] + 0.5 * total) % total - 0.5 * total
+            turns = here * there < 0.0
+            share = np.where(turns, here / np.where(turns, here - there, 1.0), 0.0)
+            result[:, side] = (arcs[k] + share * gap) % total
+        return result
+
+    def _lee(self, body, directions):
+        """Start (counter-clockwise) and length of the lee wall, between the widest points."""
+        left, right = self._widest_arcs(body, directions).T
+        return right, (left - right) % self._arcs[body].length
+
+    def _breadths(self, body, directions):
+        places = self._place(body, self._widest_arcs(body, directions))
+        across = (places / np.exp(1j * np.radians(directions))[:, None]).imag
+        return across[:, 0] - across[:, 1]
+
+    def _place(self, body, arcs):
+        """Complex wall points at arc positions."""
+        if self.order > 1:
+            wall = self._arcs[body]
+            flat = self.outlines[body].position(wall.parameter(np.ravel(arcs)))
+            return flat.reshape(np.shape(arcs))
+        k, x = self._panel_at(body, arcs)
+        a, b = self._panels.ends[k, 0], self._panels.ends[k, 1]
+        return 0.5 * (a + b) + 0.5 * (b - a) * x
+
+    def _panel_at(self, body, arcs):
+        """Panel index and coordinate in [-1, 1] along its arc of arc positions on a body."""
+        part = self._panels.panel_slice(body)
+        first = self._panels.end_arcs[part, 0]
+        arcs = np.asarray(arcs) % self._arcs[body].length
+        k = np.clip(np.searchsorted(first, arcs, "right") - 1, 0, len(first) - 1) + part.start
+        low, high = self._panels.end_arcs[k, 0], self._panels.end_arcs[k, 1]
+        return k, 2.0 * (arcs - low) / (high - low) - 1.0
+
+    def _wall_speed_at(self, body, gamma, arcs):
+        """gamma (..., N) interpolated on its panel at arc positions (k,): (..., k)."""
+        k, x = self._panel_at(body, arcs)
+        to_modes = np.linalg.inv(
+            legendre.legvander(legendre.leggauss(self.order)[0], self.order - 1)
+        )
+        weights = legendre.legvander(x, self.order - 1) @ to_modes
+        columns = k[:, None] * self.order + np.arange(self.order)
+        return np.sum(gamma[..., columns] * weights, axis=-1)
+
+    # --- what the caller asks for -----------------------------------------------------------
+
+    def breadth(self, body, direction=0.0):
+        """Breadth of a body across the stream, in the caller's unit: float, or (n,) array."""
+        body, directions = self._body(body), self._directions(direction)
+        return _shaped(self._breadths(body, np.atleast_1d(directions)), directions)
+
+    def widest(self, body, direction=0.0):
+        """(..., 2, 2): the wall points widest across the stream, the stream's left one first."""
+        body, directions = self._body(body), self._directions(direction)
+        arcs = self._widest_arcs(body, np.atleast_1d(directions))
+        return _shaped(_pairs(self._place(body, arcs)), directions)
+
+    def edge_point(self, body):
+        """(2,): the sharp edge of a body, or None if it has none."""
+        if not self._has_edge(self._body(body)):
+            return None
+        return _pairs(self.outlines[body].position(np.array([self.outlines[body].edge])))[0]
+
+    def undisturbed(self, points, direction=0.0):
+        """(..., 2): the onset velocity at the points, over the onset speed."""
+        points, directions = as_points("points", points), self._directions(direction)
+        onset = _components(np.atleast_1d(directions))
+        shape = (len(onset),) + (1,) * (points.ndim - 1) + (2,)
+        full = np.broadcast_to(onset.reshape(shape), (len(onset),) + points.shape).copy()
+        return _shaped(full, directions)
+
+    def velocity(self, points, direction=0.0):
+        """(..., 2) velocity at points (..., 2), over the onset speed; NaN inside a body.
+
+        A vector of n directions makes it (n, ..., 2). A point on a wall gets the outer limit.
+
+        Raises
+        ------
+        InputError
+            If points or directions are not usable, or the surroundings do not admit a direction.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.circle(2.0))
+        >>> model.velocity([(0.0, 1.0), (0.0, 2.0)]).round(6) + 0.0
+        array([[2.  , 0.  ],
+               [1.25, 0.  ]])
+        """
+        points, directions = as_points("points", points), self._directions(direction)
+        complex_velocity = self._velocity(_complex(points).ravel(), np.atleast_1d(directions))
+        pairs = _pairs(complex_velocity.conj())
+        return _shaped(pairs.reshape(pairs.shape[:1] + points.shape), directions)
+
+    def _velocity(self, z, directions, mask=True):
+        """(directions, len(z)) complex velocity u - i v."""
+        rows, combination = self._strengths(directions)
+        evaluate = flow.velocity if len(rows) < BY_MATRIX else flow.velocity_by_matrix
+        fields = evaluate(self._panels, self.surroundings, rows, z)
+        total = fields if combination is None else combination @ fields
+        total = total + np.exp(-1j * np.radians(directions))[:, None]
+        return self._masked(total, z) if mask else total
+
+    def _masked(self, values, z):
+        values[:, flow.enclosing_body(self._panels, z) >= 0] = np.nan
+        return values
+
+    def velocity_gradient(self, points, direction=0.0):
+        """(..., 2, 2) d(u, v)/d(x, y) at points (..., 2), per unit of length; NaN inside a body.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> ob.solve(ob.circle(2.0)).velocity_gradient((2.0, 0.0)).round(6) + 0.0
+        array([[ 0.25,  0.  ],
+               [ 0.  , -0.25]])
+        """
+        points, directions = as_points("points", points), self._directions(direction)
+        z, flat = _complex(points).ravel(), np.atleast_1d(directions)
+        rows, combination = self._strengths(flat)
+        fields = flow.gradient(self._panels, self.surroundings, rows, z)
+        total = self._masked(fields if combination is None else combination @ fields, z)
+        gradient = np.stack(
+            [np.stack([total.real, -total.imag], -1), np.stack([-total.imag, -total.real], -1)], -2
+        )
+        return _shaped(gradient.reshape((len(flat),) + points.shape + (2,)), directions)
+
+    def pressure_coefficient(self, points, direction=0.0):
+        """(...,) pressure coefficient 1 - speed^2 at points (..., 2); NaN inside a body.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> round(float(ob.solve(ob.circle(2.0)).pressure_coefficient((-1.0, 0.0))), 6)
+        1.0
+        """
+        velocity = self.velocity(points, direction)
+        return 1.0 - np.sum(velocity * velocity, axis=-1)
+
+    def stream_function(self, points, direction=0.0):
+        """(...,) stream function at points (..., 2), a length for unit onset speed.
+
+        Far away without circulation and wakes it is y cos(direction) - x sin(direction). A wake
+        makes a cut straight downstream of its body. NaN inside a body.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.circle(2.0))
+        >>> model.stream_function([(0.0, 1.0), (0.0, 2.0)]).round(6) + 0.0
+        array([0. , 1.5])
+        """
+        points, directions = as_points("points", points), self._directions(direction)
+        z, flat = _complex(points).ravel(), np.atleast_1d(directions)
+        rows, combination = self._strengths(flat)
+        along = np.radians(flat) if combination is None else np.zeros(len(rows))
+        fields = flow.potential(
+            self._panels, self.surroundings, rows, self._rearmost(along), along, z
+        ).imag
+        total = fields if combination is None else combination @ fields
+        total = total + (z * np.exp(-1j * np.radians(flat))[:, None]).imag
+        return _shaped(self._masked(total, z).reshape((len(flat),) + points.shape[:-1]), directions)
+
+    def _rearmost(self, along):
+        """(directions, bodies) the panel whose first end lies farthest downstream."""
+        places = (self._panels.ends[:, 0] * np.exp(-1j * along)[:, None]).real
+        parts = [self._panels.panel_slice(b) for b in range(self._panels.bodies)]
+        return np.stack([np.argmax(places[:, p], axis=1) + p.start for p in parts], axis=1)
+
+    def surface(self, body, direction=0.0):
+        """SurfaceFlow of one body: points, arc, signed speed and pressure at its nodes.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> wall = ob.solve(ob.circle(2.0)).surface(0)
+        >>> round(float(abs(wall.speed).max()), 3)
+        2.0
+        """
+        body, directions = self._body(body), self._directions(direction)
+        flat = np.atleast_1d(directions)
+        part, total = self._panels.node_slice(body), self._arcs[body].length
+        speed = self._wall_speeds(flat)[:, part]
+        pressure = 1.0 - speed**2
+        if self.wakes[body] is not None:
+            start, length = self._lee(body, flat)
+            within = (self._panels.arcs[part] - start[:, None]) % total
+            pressure[within < length[:, None]] = np.nan
+        arc = (self._panels.arcs[part] - self._arcs[body].start) % total
+        return SurfaceFlow(
+            _pairs(self._panels.nodes[part]), arc, _shaped(speed, directions),
+            _shaped(pressure, directions),
+        )
+
+    def _wall_speeds(self, directions):
+        """(directions, N) signed surface speed."""
+        rows, combination = self._strengths(directions)
+        return (rows if combination is None else combination @ rows).real
+
+    def wall_normal_speed(self, body, direction=0.0):
+        """(n,) outward normal speed at the nodes of a body: that of its wake, or zero."""
+        body, directions = self._body(body), self._directions(direction)
+        blown = self._wall_normal_speeds(np.atleast_1d(directions))
+        return _shaped(blown[:, self._panels.node_slice(body)], directions)
+
+    def port_pressure(self, body, arc_fraction, direction=0.0):
+        """Pressure coefficient on a wall at a fraction of its arc, from the outline's first point.
+
+        Counter-clockwise, 0 to 1. NaN in the lee of a body with a wake.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.circle(2.0))                  # first point at (1, 0)
+        >>> round(float(model.port_pressure(0, 150 / 360)), 6) + 0.0   # 30 degrees off the front
+        0.0
+        """
+        body, directions = self._body(body), self._directions(direction)
+        fraction = as_number("arc_fraction", arc_fraction, least=0.0, greatest=1.0)
+        flat, total = np.atleast_1d(directions), self._arcs[body].length
+        arc = (self._arcs[body].start + fraction * total) % total
+        speed = self._wall_speed_at(body, self._wall_speeds(flat), np.array([arc]))[:, 0]
+        pressure = 1.0 - speed**2
+        if self.wakes[body] is not None:
+            start, length = self._lee(body, flat)
+            pressure[(arc - start) % total < length] = np.nan
+        return _shaped(pressure, directions)
+
+    def circulation(self, direction=0.0):
+        """(bodies,) circulation round each body, counter-clockwise, for unit onset speed."""
+        directions = self._directions(direction)
+        speeds = self._wall_speeds(np.atleast_1d(directions)) * self._panels.weights
+        first = self._panels.starts[:-1] * self.order
+        return _shaped(np.add.reduceat(speeds, first, axis=1), directions)
+
+    def force(self, direction=0.0):
+        """(bodies, 2) force per unit dynamic pressure and unit span, a length.
+
+        The integral of the pressure (Blasius). For a body with a wake that would be a thrust and
+        means nothing: its component along the stream is then the stated drag, and only the one
+        across it that of the potential flow.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> ob.solve(ob.circle(1.0), circulation=-2.0).force().round(9) + 0.0
+        array([[0., 4.]])
+        """
+        directions = self._directions(direction)
+        flat = np.atleast_1d(directions)
+        rows, combination = self._strengths(flat)
+        strengths = rows if combination is None else combination @ rows
+        moment = strengths**2 * self._panels.tangents.conj() * self._panels.weights
+        first = self._panels.starts[:-1] * self.order
+        force = (1j * np.add.reduceat(moment, first, axis=1)).conj()
+        for body, wake in enumerate(self.wakes):
+            if wake is not None:
+                stream = np.exp(1j * np.radians(flat))
+                across = (force[:, body] / stream).imag
+                force[:, body] = stream * (self._drag(body, flat) + 1j * across)
+        return _shaped(_pairs(force), directions)
+
+    def stagnation_points(self, body, direction=0.0):
+        """(k, 2) points of a wall where the speed changes sign; a list of them for a vector.
+
+        In the lee of a body with a wake there are none: the wall speed means nothing there.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> ob.solve(ob.circle(2.0)).stagnation_points(0).round(6) + 0.0
+        array([[ 1.,  0.],
+               [-1.,  0.]])
+        """
+        body, directions = self._body(body), self._directions(direction)
+        flat = np.atleast_1d(directions)
+        speeds = self._wall_speeds(flat)
+        found = [self._stagnation(body, row, d) for row, d in zip(speeds, flat, strict=True)]
+        return found if np.ndim(directions) else found[0]
+
+    def _stagnation(self, body, gamma, direction):
+        part, total = self._panels.node_slice(body), self._arcs[body].length
+        arcs = self._panels.arcs[part]
+        forward = gamma[part] >= 0.0
+        places = []
+        for k in np.flatnonzero(forward != np.roll(forward, -1)):
+            low = arcs[k]
+            high = arcs[(k + 1) % len(arcs)] + (total if k + 1 == len(arcs) else 0.0)
+            places.append(self._zero_between(body, gamma, low, high) % total)
+        places = np.array(places)
+        if self.wakes[body] is not None and len(places):
+            start, length = self._lee(body, np.array([direction]))
+            places = places[(places - start) % total >= length]
+        order = np.argsort((places - self._arcs[body].start) % total)
+        return _pairs(self._place(body, places[order])) if len(places) else np.empty((0, 2))
+
+    def _zero_between(self, body, gamma, low, high):
+        """Where the piecewise polynomial gamma, or its jump between panels, passes zero."""
+        def speed(arc):
+            return float(self._wall_speed_at(body, gamma, np.array([arc]))[0])
+
+        if speed(low) * speed(high) >= 0.0:   # rounding, or one of them is zero itself
+            return low if abs(speed(low)) < abs(speed(high)) else high
+        return brentq(speed, low, high, xtol=1e-14 * self._arcs[body].length)
+
+    def streamlines(self, starts, direction=0.0, length=None, domain=None, both_ways=False):
+        """Streamlines from points, downstream for a given length: a list of (k, 2) arrays.
+
+        Parameters
+        ----------
+        starts : (..., 2) array
+        direction : float
+            One direction, in degrees.
+        length : float, optional
+            Arc length to follow; negative goes upstream. None: three times the bodies' extent.
+        domain : (xmin, xmax, ymin, ymax), optional
+            Lines end where they leave it.
+        both_ways : bool
+            Follow each line upstream too; its start is then within it.
+
+        A line ends at a wall, at a point of rest, at the domain's edge or at its length; one that
+        would start inside a body is empty. In the ends of a vector of directions: call in a loop.
+
+        Raises
+        ------
+        InputError
+            If starts, direction, length or domain are not usable.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.circle(2.0))
+        >>> line, = model.streamlines((-4.0, 1.0), length=8.0)
+        >>> bool(abs(model.stream_function(line) - model.stream_function(line[0])).max() < 1e-6)
+        True
+        """
+        starts = as_points("starts", starts).reshape(-1, 2)
+        directions = self._directions(direction)
+        if np.ndim(directions):
+            raise InputError("direction must be one number for streamlines; call once for each")
+        if length is None:
+            x0, x1, y0, y1 = self.extent
+            length = 3.0 * max(x1 - x0, y1 - y0)
+        length = as_number("length", length)
+        if domain is not None:
+            domain = _as_domain(domain)
+        return trace(self, starts, float(directions), length, domain, both_ways)
+
+    def grid(self, x, y, direction=0.0):
+        """Velocity on the tensor grid of x and y: (len(y), len(x), 2), NaN inside bodies.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> ob.solve(ob.circle(2.0)).grid([2.0, 3.0], [0.0]).round(4) + 0.0
+        array([[[0.75  , 0.    ],
+                [0.8889, 0.    ]]])
+        """
+        x, y = as_reals("x", x), as_reals("y", y)
+        for name, axis in (("x", x), ("y", y)):
+            if axis.ndim != 1:
+                raise InputError(f"{name} must be a vector of grid lines; got shape {axis.shape}")
+        return self.velocity(np.stack(np.meshgrid(x, y), axis=-1), direction)
+
+    def _directions(self, direction):
+        return self.surroundings.admit(as_directions("direction", direction))
+
+    def _body(self, body):
+        return as_body("body", body, self._panels.bodies)
+
+
+def _as_outlines(outlines):
+    bodies = [outlines] if isinstance(outlines, Outline) else outlines
+    if not isinstance(bodies, Sequence) or not bodies:
+        raise InputError(f"outlines must be an outline or a sequence of them, got {outlines!r}")
+    for k, body in enumerate(bodies):
+        if not isinstance(body, Outline):
+            raise InputError(f"outlines[{k}] must be an outline such as ob.circle(...), got {body!r}")
+    return tuple(bodies)
+
+
+def _per_body(name, given, bodies):
+    if not isinstance(given, (Sequence, np.ndarray)):
+        return [given] * bodies
+    if len(given) != bodies:
+        raise InputError(f"{name} has {len(given)} entries for {bodies} bodies; give one for each")
+    return list(given)
+
+
+def _as_domain(domain):
+    domain = as_reals("domain", domain)
+    if domain.shape != (4,) or domain[0] >= domain[1] or domain[2] >= domain[3]:
+        raise InputError(f"domain must be (xmin, xmax, ymin, ymax), got {domain.tolist()}")
+    return tuple(domain)
+
+
+def _components(directions):
+    """(n, 2) unit vectors of directions in degrees, exact at right angles."""
+    quarter, rest = np.divmod(np.asarray(directions, float) + 45.0, 90.0)
+    angle = np.radians(rest - 45.0)
+    unit = np.exp(1j * angle) * np.array([1, 1j, -1, -1j])[quarter.astype(int) % 4]
+    return _pairs(unit)
+
+
+def _complex(points):
+    return points[..., 0] + 1j * points[..., 1]
+
+
+def _pairs(z):
+    return np.stack([z.real, z.imag], axis=-1)
+
+
+def _shaped(values, directions):
+    """Drop the leading axis if one direction was asked for; a lone number becomes a float."""
+    if np.ndim(directions):
+        return values
+    return values[0] if values.ndim > 1 else float(values[0])

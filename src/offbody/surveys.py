@@ -1,0 +1,638 @@
+"""Surveys: what every sensor reads in every direction, against the undisturbed stream."""
+
+from dataclasses import dataclass
+from functools import cached_property, wraps
+from typing import ClassVar
+
+import numpy as np
+
+from offbody.arcs import Arcs
+from offbody.bearings import from_bearing, to_bearing, within_turn
+from offbody.checks import as_body, as_directions, as_number
+from offbody.errors import InputError
+from offbody.sensors import SENSORS, PointSensor
+from offbody.surroundings import OpenStream
+
+# Rules of this project, not of the trade: first and cautious guesses.
+LEE_HALF_ANGLE = 10.0  # degrees by which the lee of a bluff body widens on either side
+INCIDENCE_LIMIT = 12.0  # degrees up to which the flow is taken to follow a body with a sharp edge
+FROM_BEHIND = 90.0  # degrees beyond which a sharp edge leads
+SQUARE_TO_PATH = 0.05  # cosine below which a ratio of components along a path says nothing
+WIDEST_STEP = 15.0  # degrees over which a sector goes on: none can step across a lee
+
+
+def survey(model, sensors, directions=None, *, bearings=None):
+    """Table of what every sensor reads in every direction, against the undisturbed stream.
+
+    Parameters
+    ----------
+    model : Model
+        What ``ob.solve`` returned.
+    sensors : sensor or sequence of sensors
+        PointSensor, PathSensor, CrossedPaths, DiscSensor or WallPort, in any mixture; k of them.
+    directions : array_like of shape (n,), optional
+        Where the stream goes TO, degrees counter-clockwise from +x. By default 0, 1 ... 359 in
+        an open stream, and 0 and 180 where walls bound the stream.
+    bearings : array_like of shape (n,), optional
+        In place of ``directions``: where the wind comes FROM, degrees clockwise from north. The
+        table's direction errors are then clockwise positive, as in a record.
+
+    Returns
+    -------
+    Survey
+        Arrays of shape (n, k); see there for the columns and for the rules of trust.
+
+    Raises
+    ------
+    ob.InputError
+        If both directions and bearings are given or one of them cannot be used; if there is no
+        sensor, a sensor is of no known kind, or two have one name; if a sensor lies inside a body
+        or below the ground, or a body lies in a path or a disc: such a sensor could never read.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> mast = ob.solve(ob.circle(0.3))
+    >>> table = ob.survey(mast, ob.PointSensor(-1.5, 0.0), directions=[0.0, 90.0])
+    >>> table.speed_ratio.round(4)
+    array([[0.99],
+           [1.01]])
+    """
+    if not hasattr(model, "velocity_gradient"):
+        raise InputError(f"model must be what ob.solve returned, got {model!r}")
+    sensors = _as_sensors(sensors)
+    angles, by_bearing = _as_angles(model, directions, bearings)
+    samples = _Samples.of(model, sensors)
+    table = Survey(model, sensors, _names(sensors), angles, by_bearing, samples)
+    _check_above_ground(table)
+    _check_clear_of_bodies(table)
+    return table
+
+
+def _column(method):
+    """A column of the table: worked out when first asked for, then kept, read-only."""
+
+    @wraps(method)
+    def once(self):
+        values = method(self)
+        values.setflags(write=False)
+        return values
+
+    return cached_property(once)
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class Survey:
+    """Table of n directions by k sensors, made by ``ob.survey``; arrays are (n, k) unless said.
+
+    A quantity that a sensor does not read, or that has no meaning, is NaN. A sensor stands for
+    the undisturbed stream if its speed ratio is 1 and its direction error 0. Columns are worked
+    out when first asked for.
+
+    Attributes
+    ----------
+    model : Model
+    sensors : tuple of sensors
+    names : tuple of str
+        Of the sensors; where no name was given, the kind and the place in the table.
+    directions : (n,) array
+        Where the stream goes TO, degrees counter-clockwise from +x.
+    bearings : (n,) array
+        Where the wind comes FROM, degrees clockwise from north.
+    by_bearing : bool
+        Whether the table was asked for by bearings.
+    angles : (n,) array
+        The table's own angles: the bearings if it was asked for by bearings, else the directions.
+    speed_ratio : array
+        Sensed over undisturbed speed; for a path, the ratio of the components along it, NaN where
+        the stream is within three degrees of square to it.
+    direction_error : array
+        Sensed minus undisturbed direction, degrees in (-180, 180]; counter-clockwise positive, or
+        clockwise positive if the table was asked for by bearings.
+    component_error : array
+        For paths: sensed minus undisturbed component along the path, over the undisturbed speed.
+    static_error : array
+        Pressure coefficient at the sensor, the mean over a path or a disc.
+    speed_ratio_gradient : (n, k, 2) array
+        Change of the speed ratio per unit of length by which the sensor as a whole is misplaced
+        in x and in y.
+    trust : array of bool
+        False where potential flow is known to fail, by the rules below.
+    reason : array of str
+        Why there is no trust; empty where there is.
+    notes : tuple of str
+        What the reader must know about the whole table.
+    columns : tuple of (name, unit, sentence)
+        What ``rows`` yields.
+
+    Notes
+    -----
+    Trust is refused, the first rule that applies giving the reason,
+
+    1. to every sensor, where a body with a sharp edge meets the stream at more than 12 degrees of
+       incidence, from behind (beyond 90 degrees) included: its circulation would be fiction. The
+       incidence is the angle between the stream and the line to the edge from the point of the
+       wall farthest from it;
+    2. to a sensor with a sample point, or a port, in the lee of a body without a sharp edge:
+       downstream of the line that joins the two points of its wall widest across the stream, and
+       within the strip between them, which widens by 10 degrees on either side.
+
+    A body with a sharp edge within its incidence has only a thin wake, which is left out. The
+    limits of 12 and 10 degrees are cautious choices of this project. A sensor inside a body has
+    no place in a table: ``ob.survey`` refuses it.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> mast = ob.solve(ob.circle(0.3))
+    >>> ob.survey(mast, ob.PointSensor(0.0, 1.5, name="boom"), bearings=range(0, 360, 10))
+    Survey(bearings: 36, sensors: boom)
+    """
+
+    model: object
+    sensors: tuple
+    names: tuple
+    angles: np.ndarray
+    by_bearing: bool
+    _samples: object
+
+    columns: ClassVar[tuple] = (
+        ("sensor", "", "Name of the sensor."),
+        ("direction", "degrees", "Where the stream goes to, counter-clockwise from +x."),
+        ("bearing", "degrees", "Where the wind comes from, clockwise from north (+y)."),
+        (
+            "speed_ratio",
+            "1",
+            "Sensed over undisturbed speed; for a path, of the components along it.",
+        ),
+        (
+            "direction_error",
+            "degrees",
+            "Sensed minus undisturbed direction; counter-clockwise positive in a table made for "
+            "directions, clockwise positive in one made for bearings.",
+        ),
+        (
+            "component_error",
+            "1",
+            "For a path: sensed minus undisturbed component, over the undisturbed speed.",
+        ),
+        ("static_error", "1", "Pressure coefficient at the sensor."),
+        (
+            "speed_ratio_gradient_x",
+            "1/length",
+            "Change of the speed ratio per unit of length by which the sensor moves along x.",
+        ),
+        (
+            "speed_ratio_gradient_y",
+            "1/length",
+            "Change of the speed ratio per unit of length by which the sensor moves along y.",
+        ),
+        ("trust", "", "False where potential flow is known to fail."),
+        ("reason", "", "Why there is no trust; empty where there is."),
+    )
+
+    def __repr__(self):
+        kind = "bearings" if self.by_bearing else "directions"
+        return f"Survey({kind}: {len(self.angles)}, sensors: {', '.join(self.names)})"
+
+    @_column
+    def directions(self):
+        return np.array(from_bearing(self.angles) if self.by_bearing else self.angles)
+
+    @_column
+    def bearings(self):
+        return np.array(self.angles if self.by_bearing else to_bearing(self.angles))
+
+    @_column
+    def speed_ratio(self):
+        return self._where_read("speed", self._speed_of(self._sensed, self._velocity))
+
+    @_column
+    def direction_error(self):
+        turn = self._sensed * self._undisturbed.conj()
+        degrees = np.where(turn == 0, np.nan, np.angle(turn, deg=True))
+        degrees = -degrees if self.by_bearing else degrees
+        # A stream turned back is 180 degrees off, whichever way the rounding went.
+        return self._where_read("direction", np.where(degrees == -180, 180.0, degrees))
+
+    @_column
+    def component_error(self):
+        excess = ((self._sensed - self._undisturbed) * self._samples.axes.conj()).real
+        return np.where(self._samples.are("path"), excess / np.abs(self._undisturbed), np.nan)
+
+    @_column
+    def static_error(self):
+        pressure = 1 - self._samples.gather(self._samples.weights * np.abs(self._velocity) ** 2)
+        for place, sensor in enumerate(self.sensors):
+            if sensor.kind == "port":
+                pressure[:, place] = self.model.port_pressure(
+                    sensor.body, sensor.arc_fraction, self.directions
+                )
+        return pressure
+
+    @_column
+    def speed_ratio_gradient(self):
+        samples = self._samples
+        gradient = self.model.velocity_gradient(samples.points, self.directions)
+        moved = [_as_complex(gradient[..., axis]) for axis in (0, 1)]
+        changes = [self._speed_of(samples.read(change), change) for change in moved]
+        return self._where_read("speed", np.stack(changes, axis=-1))
+
+    @_column
+    def trust(self):
+        return ~(self._astray.any(axis=0)[:, None] | self._in_lee.any(axis=0))
+
+    @_column
+    def reason(self):
+        reasons = np.full(self.trust.shape, "", dtype=object)
+        # The last written is the first that applies.
+        for body in reversed(range(len(self.model.outlines))):
+            reasons[self._in_lee[body]] = f"in the lee of body {body}"
+        for body in reversed(range(len(self.model.outlines))):
+            for row in np.flatnonzero(self._astray[body]):
+                reasons[row] = _astray_reason(body, self._incidence[body, row])
+        return reasons
+
+    @cached_property
+    def notes(self):
+        return tuple(
+            self._wake_left_out(body)
+            for body, outline in enumerate(self.model.outlines)
+            if outline.edge is None and self.model.wakes[body] is None
+        )
+
+    def sectors(self, limit=0.01):
+        """Per sensor, the sectors in which its speed ratio is within a limit of 1 and trusted.
+
+        Parameters
+        ----------
+        limit : float
+            Greatest difference of the speed ratio from 1.
+
+        Returns
+        -------
+        list of lists of (from, to)
+            In the table's own angles (bearings if it was asked for by bearings), within [0, 360)
+            and ``from`` through ``to`` with growing angle, so that (350.0, 20.0) runs across
+            zero. Both ends are angles of the table: nothing is read in between, and angles more
+            than 15 degrees apart are not joined. The whole turn is (first, first + 360). A sensor
+            that reads no speed has no sectors.
+
+        Raises
+        ------
+        ob.InputError
+            If the limit is not greater than zero.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> mast = ob.solve(ob.circle(0.3))
+        >>> ob.survey(mast, ob.PointSensor(-1.8, 0.0)).sectors(0.01)
+        [[(195.0, 165.0)]]
+        """
+        limit = as_number("limit", limit, positive=True)
+        good = self.trust & (np.abs(self.speed_ratio - 1) <= limit)
+        return [_runs(self.angles, column) for column in good.T]
+
+    def worst(self):
+        """Per sensor, the angle of its worst trusted speed ratio, and that ratio.
+
+        Returns
+        -------
+        list of (angle, speed_ratio)
+            The angle is the table's own (a bearing if it was asked for by bearings). A sensor
+            with no trusted speed ratio has (nan, nan).
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> mast = ob.solve(ob.circle(0.3))
+        >>> [(angle, ratio)] = ob.survey(mast, ob.PointSensor(0.0, 1.5), range(0, 360, 30)).worst()
+        >>> float(angle), round(ratio, 4)
+        (0.0, 1.01)
+        """
+        deviation = np.where(self.trust, np.abs(self.speed_ratio - 1), np.nan)
+        rows = np.where(np.isnan(deviation), -1.0, deviation).argmax(axis=0)
+        return [
+            (float(self.angles[row]), float(self.speed_ratio[row, place]))
+            if np.isfinite(deviation[row, place])
+            else (np.nan, np.nan)
+            for place, row in enumerate(rows)
+        ]
+
+    def rows(self):
+        """Yield one dict per direction and sensor, with the keys of ``columns``.
+
+        Yields
+        ------
+        dict
+            Plain Python numbers, booleans and texts; directions vary slowest.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> mast = ob.solve(ob.circle(0.3))
+        >>> row = next(ob.survey(mast, ob.PointSensor(0.0, 1.5)).rows())
+        >>> row["sensor"], row["trust"]
+        ('point 1', True)
+        """
+        names = [name for name, _, _ in self.columns]
+        tables = [self.speed_ratio, self.direction_error, self.component_error, self.static_error]
+        tables += [*np.moveaxis(self.speed_ratio_gradient, -1, 0), self.trust, self.reason]
+        angles = zip(self.directions.tolist(), self.bearings.tolist(), strict=True)
+        tables = [table.tolist() for table in tables]
+        for (direction, bearing), *lines in zip(angles, *tables, strict=True):
+            for sensor, *values in zip(self.names, *lines, strict=True):
+                yield dict(zip(names, (sensor, direction, bearing, *values), strict=True))
+
+    @cached_property
+    def _velocity(self):
+        """Velocity u + i v at every sample, (n, m)."""
+        return _as_complex(self.model.velocity(self._samples.points, self.directions))
+
+    @cached_property
+    def _undisturbed(self):
+        """Undisturbed u + i v at every sensor, (n, k); the onset is the same everywhere."""
+        return _as_complex(self.model.undisturbed(self._samples.centres, self.directions))
+
+    @cached_property
+    def _sensed(self):
+        """Sensed u + i v of every sensor, (n, k); for a path, its component along it."""
+        return self._samples.read(self._velocity)
+
+    @cached_property
+    def _speed_axes(self):
+        """Along which the sensed vectors, and their changes, are measured as speeds, (n, k)."""
+        axes = _unit(self._sensed)
+        paths = self._samples.are("path")
+        if paths.any():
+            along = self._samples.axes[paths]
+            cosine = (_unit(self._undisturbed[:, paths]) * along.conj()).real
+            cosine[np.abs(cosine) < SQUARE_TO_PATH] = np.nan
+            # Its reading is compared with the undisturbed component, not with the whole speed.
+            axes[:, paths] = along * (1 / cosine)
+        return axes
+
+    def _speed_of(self, sensed, velocity):
+        """Ratio to the undisturbed speed, (n, k), of the flow's own vectors or of their change."""
+        speed = (sensed * self._speed_axes.conj()).real
+        discs = self._samples.are("disc")
+        if discs.any():
+            mean = self._samples.weights * (velocity * _unit(self._velocity).conj()).real
+            speed[:, discs] = self._samples.gather(mean)[:, discs]
+        return speed / np.abs(self._undisturbed)
+
+    def _where_read(self, quantity, values):
+        """The values, NaN in the columns of sensors that do not read the quantity."""
+        unread = [sensor.reads not in ("both", quantity) for sensor in self.sensors]
+        values[:, unread] = np.nan
+        return values
+
+    @cached_property
+    def _incidence(self):
+        """Angle between the stream and every body with a sharp edge, (bodies, n); else NaN."""
+        angles = np.full((len(self.model.outlines), len(self.directions)), np.nan)
+        for body, outline in enumerate(self.model.outlines):
+            if outline.edge is not None:
+                to_edge = _as_complex(self.model.edge_point(body) - self.model.walls[body])
+                chord = to_edge[np.abs(to_edge).argmax()]
+                turn = self.directions - np.angle(chord, deg=True)
+                angles[body] = 180 - np.abs(within_turn(turn) - 180)
+        return angles
+
+    @cached_property
+    def _astray(self):
+        """Where the stream meets a sharp-edged body beyond the limit, (bodies, n)."""
+        return self._incidence > INCIDENCE_LIMIT
+
+    @cached_property
+    def _in_lee(self):
+        """Where a sensor lies in the lee of each bluff body, (bodies, n, k)."""
+        samples = self._samples
+        lee = np.zeros((len(self.model.outlines), len(self.directions), len(self.sensors)), bool)
+        for body, outline in enumerate(self.model.outlines):
+            if outline.edge is None:
+                widest = _as_complex(self.model.widest(body, self.directions))
+                caught = _is_in_lee(_as_complex(samples.points), widest, self.directions)
+                lee[body] = samples.gather(caught, np.logical_or)
+        for place, sensor in enumerate(self.sensors):
+            if sensor.kind == "port":
+                # Behind the separation that a wake implies there is no pressure to be had.
+                lee[sensor.body, :, place] |= np.isnan(self.static_error[:, place])
+        return lee
+
+    def _wake_left_out(self, body):
+        """The note on a bluff body without a drag coefficient."""
+        note = (
+            f"No drag coefficient is given for body {body} ({self.model.outlines[body].name}): "
+            "the wake's displacement is left out. "
+        )
+        standing = np.flatnonzero(~self._samples.are("port"))
+        if standing.size:
+            wall = self.model.walls[body]
+            middle = (wall.min(axis=0) + wall.max(axis=0)) / 2
+            distance = np.abs(_as_complex(self._samples.centres - middle))
+            worst = standing[distance[standing].argmin()]
+            breadth = np.max(self.model.breadth(body, self.directions))
+            percent = 100 * breadth / (4 * np.pi * distance[worst])
+            note += (
+                f"For Cd = 1 it would slow the undisturbed flow at {self.names[worst]} by up to "
+                f"{percent:.2g} percent (Cd b/(4 pi R), in an open stream); "
+            )
+        else:
+            note += "As a guide to Cd: "
+        return note + (
+            "common practice: about 1.2 for a subcritical tube, 0.3 to 0.7 beyond the drag "
+            "crisis, about 2 for a square."
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class _Samples:
+    """The sample points of all sensors, end to end."""
+
+    points: np.ndarray  # (m, 2)
+    weights: np.ndarray  # (m,)
+    direct: np.ndarray  # (m,)
+    turned: np.ndarray  # (m,)
+    owner: np.ndarray  # (m,) which sensor
+    starts: np.ndarray  # (k,) first sample of each sensor
+    centres: np.ndarray  # (k, 2)
+    axes: np.ndarray  # (k,) complex, zero but for paths
+    kinds: tuple
+
+    @classmethod
+    def of(cls, model, sensors):
+        # A port samples its place on the wall, for the lee; its pressure is the model's own.
+        standing = [
+            PointSensor(*_port_place(model, sensor)) if sensor.kind == "port" else sensor
+            for sensor in sensors
+        ]
+        counts = [len(sensor.points) for sensor in standing]
+        return cls(
+            points=np.concatenate([sensor.points for sensor in standing]),
+            weights=np.concatenate([sensor.weights for sensor in standing]),
+            direct=np.concatenate([sensor.direct for sensor in standing]),
+            turned=np.concatenate([sensor.turned for sensor in standing]),
+            owner=np.repeat(np.arange(len(sensors)), counts),
+            starts=np.cumsum([0, *counts[:-1]]),
+            centres=np.array([sensor.centre for sensor in standing]),
+            axes=np.array([getattr(sensor, "axis", 0j) for sensor in standing]),
+            kinds=tuple(sensor.kind for sensor in sensors),
+        )
+
+    def gather(self, values, operation=np.add):
+        """Values at the samples, (n, m, ...), joined to one per sensor, (n, k, ...)."""
+        return operation.reduceat(values, self.starts, axis=1)
+
+    def read(self, velocity):
+        """Vectors sensed, (n, k), of velocities (or their changes) at the samples, (n, m)."""
+        return self.gather(self.direct * velocity + self.turned * velocity.conj())
+
+    def are(self, kind):
+        """Which sensors are of a kind, (k,) bool."""
+        return np.array([one == kind for one in self.kinds])
+
+
+def _as_sensors(sensors):
+    """The sensors as a tuple, or an InputError."""
+    known = ", ".join(kind.__name__ for kind in SENSORS)
+    if isinstance(sensors, SENSORS):
+        return (sensors,)
+    if not isinstance(sensors, list | tuple):
+        raise InputError(f"sensors must be a list of sensors ({known}), got {sensors!r}")
+    if not sensors:
+        raise InputError(f"sensors is empty: give at least one of {known}")
+    for place, sensor in enumerate(sensors):
+        if not isinstance(sensor, SENSORS):
+            raise InputError(f"sensors[{place}] must be one of {known}, got {sensor!r}")
+    return tuple(sensors)
+
+
+def _names(sensors):
+    """One name per sensor, all different, or an InputError."""
+    names = tuple(
+        sensor.name if sensor.name is not None else f"{sensor.kind} {place}"
+        for place, sensor in enumerate(sensors, start=1)
+    )
+    for place, name in enumerate(names):
+        if name in names[:place]:
+            first = names.index(name)
+            raise InputError(
+                f"sensors[{first}] and sensors[{place}] are both named {name!r}: give each sensor "
+                "a name of its own"
+            )
+    return names
+
+
+def _as_angles(model, directions, bearings):
+    """The table's own angles, and whether they are bearings."""
+    if directions is not None and bearings is not None:
+        raise InputError(
+            "directions and bearings are both given: give directions (where the stream goes to) "
+            "or bearings (where the wind comes from), not both"
+        )
+    if directions is None and bearings is None:
+        open_stream = isinstance(model.surroundings, OpenStream)
+        return np.arange(360.0) if open_stream else np.array([0.0, 180.0]), False
+    name, given = ("directions", directions) if bearings is None else ("bearings", bearings)
+    angles = np.atleast_1d(as_directions(name, given))
+    if angles.size == 0:
+        raise InputError(f"{name} is empty: give at least one angle, or leave it out")
+    angles.setflags(write=False)
+    return angles, bearings is not None
+
+
+def _port_place(model, port):
+    """The point of the wall, (2,), at which a port is."""
+    outline = model.outlines[as_body("WallPort body", port.body, len(model.outlines))]
+    wall = Arcs(outline)
+    arc = (wall.start + port.arc_fraction * wall.length) % wall.length
+    (place,) = outline.position(wall.parameter(np.array([arc])))
+    return place.real, place.imag
+
+
+def _check_above_ground(table):
+    """Refuse a sensor that reaches below the ground, where the flow is but the mirror image."""
+    samples = table._samples
+    places = _as_complex(samples.points)
+    images = table.model.surroundings.mirrored(places)
+    if images is None:
+        return
+    for sample in np.flatnonzero((places - images).imag < 0):
+        place = samples.owner[sample]
+        raise InputError(
+            f"sensors[{place}] ({table.names[place]}, {table.sensors[place]!r}) reaches below "
+            f"the ground {table.model.surroundings!r}: move it above"
+        )
+
+
+def _check_clear_of_bodies(table):
+    """Refuse a sensor that a body encloses or meets: it could never read."""
+    model, samples = table.model, table._samples
+    walls = [_as_complex(wall) for wall in model.walls]
+    enclosed = np.flatnonzero(np.isnan(table._velocity[0]))
+    for place, sensor in enumerate(table.sensors):
+        if sensor.kind == "port":
+            continue
+        bodies = [body for body, wall in enumerate(walls) if sensor.meets(wall)]
+        caught = _as_complex(samples.points[enclosed[samples.owner[enclosed] == place]])
+        if caught.size and not bodies:
+            # No way out of a body but through its own wall: that wall is the nearest.
+            bodies = [np.argmin([np.abs(wall - caught[0]).min() for wall in walls])]
+        if bodies:
+            raise InputError(
+                f"sensors[{place}] ({table.names[place]}, {sensor!r}) lies inside or across body "
+                f"{bodies[0]} ({model.outlines[bodies[0]].name}) and could never read: move it "
+                "clear of the body"
+            )
+
+
+def _as_complex(vectors):
+    return np.ascontiguousarray(vectors).view(complex)[..., 0]
+
+
+def _unit(vectors):
+    """Complex vectors divided by their lengths; NaN for none, as at a stagnation point."""
+    with np.errstate(invalid="ignore"):
+        return vectors / np.abs(vectors)
+
+
+def _is_in_lee(points, widest, directions):
+    """Which points (m,) lie in the lee of a body, (n, m).
+
+    ``widest``, (n, 2), holds for every direction the wall's points farthest to the left and to
+    the right of the stream.
+    """
+    # In the frame of the stream: real parts count downstream, imaginary parts to the left.
+    against = np.exp(-1j * np.radians(directions))[:, None]
+    place = points * against
+    left, right = (widest * against).T[..., None]
+    # Downstream of the line through the widest points; beyond its ends, of the nearer end.
+    share = np.clip((place - right).imag / (left - right).imag, 0, 1)
+    depth = place.real - (right + share * (left - right)).real
+    beside = np.maximum((place - left).imag, (right - place).imag)
+    return (depth > 0) & (beside <= np.tan(np.radians(LEE_HALF_ANGLE)) * depth)
+
+
+def _astray_reason(body, incidence):
+    meets = f"body {body} (sharp edge) meets the stream"
+    if incidence > FROM_BEHIND:
+        return f"{meets} from behind"
+    return f"{meets} at {incidence:.0f} degrees"
+
+
+def _runs(angles, good):
+    """Sectors of neighbouring angles that are good, as (from, to) within the whole turn."""
+    turned = within_turn(angles)
+    order = np.argsort(turned, kind="stable")
+    turned, good = turned[order], good[order]
+    steps = np.diff(turned, append=turned[0] + 360)
+    joined = good & np.roll(good, -1) & (steps <= WIDEST_STEP)
+    if joined.all():
+        return [(float(turned[0]), float(turned[0] + 360))]
+    first = np.flatnonzero(good & ~np.roll(joined, 1))
+    last = np.flatnonzero(good & ~joined)
+    if first.size and last[0] < first[0]:
+        last = np.roll(last, -1)  # the sector that runs across zero ends first and starts last
+    return list(zip(turned[first].tolist(), turned[last].tolist(), strict=True))
