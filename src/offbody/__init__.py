@@ -16,7 +16,7 @@ from offbody.outlines import (
 )
 from offbody.parallel import threads
 from offbody.sensors import CrossedPaths, DiscSensor, PathSensor, PointSensor, WallPort
-from offbody.surroundings import Ground, OpenStream
+from offbody.surroundings import Duct, Ground, OpenStream, Row
 from offbody.surveys import Survey, survey
 from offbody.wakes import Wake
 
@@ -24,6 +24,7 @@ __all__ = [
     "AccuracyWarning",
     "CrossedPaths",
     "DiscSensor",
+    "Duct",
     "Ground",
     "InputError",
     "Model",
@@ -31,6 +32,7 @@ __all__ = [
     "Outline",
     "PathSensor",
     "PointSensor",
+    "Row",
     "Survey",
     "Wake",
     "WallPort",

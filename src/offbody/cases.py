@@ -68,7 +68,7 @@ import difflib
 import os
 import re
 import tomllib
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
@@ -85,6 +85,7 @@ READINGS = ("speed", "direction", "both")
 
 # As in "the lee of body 0", "body 0 (circle ...)" and "bodies 0 (circle ...) and 1 (circle ...)".
 _COUNTED_BODY = re.compile(r"\b(?:body |bodies |(?P<before>and ))(?P<number>\d+)(?= \(|$)")
+_COUNTED_SENSOR = re.compile(r"\bsensors\[(\d+)\]")
 
 
 @dataclass(frozen=True)
@@ -135,7 +136,8 @@ class Case:
         return ob.from_bearing(angles) if self.by_bearing else angles
 
     def in_its_names(self, sentence):
-        """A sentence of the library, which counts bodies from zero, in the case's own names."""
+        """A sentence of the library, which counts from zero, in the case's own names."""
+        sentence = _COUNTED_SENSOR.sub(lambda found: f"sensor[{int(found[1]) + 1}]", sentence)
         return _COUNTED_BODY.sub(
             lambda found: (found["before"] or "") + self.bodies[int(found["number"])].name, sentence
         )
@@ -173,8 +175,8 @@ class Case:
             )
         if along_x * along_y * winds > MOST_NODES:
             raise InputError(
-                f"{self.file}: field: at least {along_x} by {along_y} nodes for {winds} winds are "
-                f"more than {MOST_NODES}; widen the spacing, or show fewer winds"
+                f"{self.file}: field: {along_x} by {along_y} nodes, winds: {winds}, are more than "
+                f"{MOST_NODES} in all; widen the spacing, or show fewer winds"
             )
         return np.linspace(x0, x1, along_x), np.linspace(y0, y1, along_y)
 
@@ -213,6 +215,14 @@ def read_case(path):
     ob.InputError
         For a file that is missing, not UTF-8 or not TOML, and for a key that is missing,
         unknown or of the wrong kind: with the file, the key and what was expected.
+
+    Examples
+    --------
+    >>> from importlib import resources
+    >>> with resources.as_file(resources.files("offbody") / "demo.toml") as path:
+    ...     case = read_case(path)
+    >>> [sensor.name for sensor in case.sensors]
+    ['cup', 'propeller vane', 'sonic']
     """
     reading = _Reading(Path(path))
     top = _Table(reading, "", _read_entries(Path(path)))
@@ -279,6 +289,15 @@ def _located(place, worded=str):
         yield
     except InputError as error:
         raise InputError(f"{place}: {worded(str(error))}") from None
+
+
+def _strangers(value):
+    """What is no number in a list, or in the lists within it."""
+    if isinstance(value, list):
+        for entry in value:
+            yield from _strangers(entry)
+    elif isinstance(value, bool) or not isinstance(value, (int, float)):
+        yield value
 
 
 class _Reading:
@@ -360,6 +379,13 @@ class _Table:
             return default[0]
         return as_number(self.place(key), self.take(key, "a number"), **limits)
 
+    def numbers(self, key, expected):
+        """A list, or a list of lists, in which there are numbers and nothing else."""
+        value = self.take(key, expected)
+        for stranger in _strangers(value):
+            raise self.error(key, f"expected {expected}, got {stranger!r}")
+        return value
+
     def text(self, key, *default):
         if default and not self.has(key):
             return default[0]
@@ -379,17 +405,17 @@ class _Table:
     def point(self, key, *default):
         if default and not self.has(key):
             return default[0]
-        return as_point(self.place(key), self.take(key, "a point [x, y]"))
+        return as_point(self.place(key), self.numbers(key, "a point [x, y]"))
 
     def points(self, key):
-        value = as_points(self.place(key), self.take(key, "points [[x, y], ...]"))
+        value = as_points(self.place(key), self.numbers(key, "points [[x, y], ...]"))
         if value.ndim != 2:
             raise self.error(key, "expected points [[x, y], ...]")
         return value
 
     def span(self, key):
         """A range [from, to] that runs upward."""
-        value = as_reals(self.place(key), self.take(key, "a range [from, to]"))
+        value = as_reals(self.place(key), self.numbers(key, "a range [from, to]"))
         if value.shape != (2,) or value[0] >= value[1]:
             raise self.error(key, f"expected a range [from, to] that runs upward, got "
                                   f"{self.entries[key]!r}")
@@ -456,7 +482,7 @@ class _Table:
 
     def angle_list(self, key):
         """A list of different angles in degrees."""
-        value = as_reals(self.place(key), self.entries[key])
+        value = as_reals(self.place(key), self.numbers(key, "a list of angles in degrees"))
         if value.ndim != 1 or not value.size:
             raise self.error(key, "expected a list of angles in degrees")
         if np.abs(value).max() > 360.0:
@@ -531,8 +557,8 @@ def _bodies(top):
 
 
 def _refuse_namesakes(sections, names):
-    for section, name in zip(sections, names, strict=True):
-        if names.count(name) > 1:
+    for place, (section, name) in enumerate(zip(sections, names, strict=True)):
+        if name in names[:place]:
             raise section.error("name", f"{name!r} is given twice; names must differ")
 
 
@@ -567,7 +593,7 @@ def _drag_table(section):
     """The drag coefficients as ``ob.Wake`` takes them, against the stream's direction."""
     key = section.angle_key("{}s", "a list of angles in degrees")
     angles = section.angle_list(key)
-    values = as_reals(section.place("values"), section.take("values", "a list of numbers"))
+    values = as_reals(section.place("values"), section.numbers("values", "a list of numbers"))
     section.close()
     if values.shape != angles.shape:
         raise section.error("values", f"expected {angles.size} numbers, one for each of {key}")
@@ -604,7 +630,9 @@ def _rectangle(section):
     centre, turned = _placed(section)
     corners = np.array([[-width, -depth], [width, -depth], [width, depth], [-width, depth]]) / 2
     with section.located():
-        return ob.polygon(corners, corner_radius).turned(turned).moved(*centre), centre
+        drawn = ob.polygon(corners, corner_radius)
+    kind = f"rectangle {width:g} by {depth:g} with corner radius {corner_radius:g}"
+    return replace(drawn, kind=kind).turned(turned).moved(*centre), centre
 
 
 def _polygon(section):
@@ -818,9 +846,9 @@ def _panels(section, bodies):
         if isinstance(value, list):
             if len(value) != bodies:
                 raise section.error("count", f"expected one number per body, {bodies} in all")
-            count = [as_count(section.place("count"), each, least=1) for each in value]
+            count = [as_count(section.place("count"), each, least=2) for each in value]
         else:
-            count = as_count(section.place("count"), value, least=1)
+            count = as_count(section.place("count"), value, least=2)
     if section.has("order"):
         order = as_count(section.place("order"), section.entries["order"], least=1, greatest=16)
     section.close()

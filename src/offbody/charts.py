@@ -21,6 +21,9 @@ SPEED = "#0072b2"  # blue and vermilion are told apart with every kind of colour
 DIRECTION = "#d55e00"
 SHADE = "#d9d9d9"
 BAND = "#b8e0cc"
+LEE = "#f4f4f4e0"
+FEW = 40  # winds, up to which each is marked by a dot
+WIDEST_SHADE = 10.0  # degrees about a wind that is not trusted
 
 
 def missing_library():
@@ -83,10 +86,12 @@ def draw_map(path, case, model, x, y, velocity, angle, caution=""):
     _draw_sensors(axes, case, model)
     _draw_stream(axes, case, angle, direction)
     _frame(axes, case, x, y, caution)
-    bar = figure.colorbar(colours, ax=axes, ticks=LEVELS, spacing="uniform", aspect=30)
+    beside = axes.inset_axes([1.03, 0.0, 0.035, 1.0])
+    bar = figure.colorbar(colours, cax=beside, ticks=LEVELS, spacing="uniform")
     bar.ax.set_yticklabels([f"{level:g}" for level in LEVELS])
     bar.set_label("speed ratio: local over undisturbed speed (1)")
-    figure.savefig(path)
+    # Cut to what is drawn: axes of equal scales leave a rest that no layout foresees.
+    figure.savefig(path, bbox_inches="tight", pad_inches=0.15)
 
 
 def _draw_speed(axes, x, y, ratio):
@@ -97,7 +102,7 @@ def _draw_speed(axes, x, y, ratio):
     slow, fast = np.linspace(0.03, 0.42, half), np.linspace(0.58, 0.92, half)
     shades = colormaps["PuOr"]
     colours = ListedColormap([*shades(slow), (1.0, 1.0, 1.0, 1.0), *shades(fast)])
-    colours.set_over(shades(0.99))
+    colours = colours.with_extremes(over=shades(0.99))
     # Contours end a cell short of a gap: carried into the bodies, which are drawn over them.
     nearest = distance_transform_edt(
         np.isnan(ratio), return_distances=False, return_indices=True
@@ -136,7 +141,7 @@ def _draw_lee(axes, model, spans, direction):
             along = np.radians(direction + side * LEE_HALF_ANGLE)
             corners.append(corner + far * np.array([np.cos(along), np.sin(along)]))
         axes.add_patch(Polygon(
-            corners, facecolor="#ffffff90", edgecolor="#808080", hatch="////", linewidth=0, zorder=3
+            corners, facecolor=LEE, edgecolor="#a0a0a0", hatch="////", linewidth=0, zorder=3
         ))
 
 
@@ -175,8 +180,10 @@ def _draw_sensors(axes, case, model):
             ha="center", va="center", fontsize=8, fontweight="bold", color=INK, zorder=8,
             bbox={"boxstyle": "circle,pad=0.25", "facecolor": "white", "edgecolor": INK},
         )
-    key = "     ".join(f"{n}  {sensor.name}" for n, sensor in enumerate(case.sensors, start=1))
-    axes.figure.supxlabel(_wrapped(key, 110), fontsize=9, parse_math=False)
+    key = [f"{number}  {sensor.name}" for number, sensor in enumerate(case.sensors, start=1)]
+    if any(outline.edge is None for outline in model.outlines):
+        key.append("hatched: lee, not predicted")
+    axes.figure.supxlabel(_wrapped(" \u2002 ".join(key), 110), fontsize=9, parse_math=False)
 
 
 def _wrapped(text, width):
@@ -208,8 +215,8 @@ def _draw_stream(axes, case, angle, direction):
     )
     axes.annotate(
         "", corner, xycoords="axes fraction", xytext=-44.0 * ahead, textcoords="offset points",
-        zorder=10, arrowprops={"arrowstyle": "simple,head_width=0.9,tail_width=0.25",
-                               "facecolor": INK, "edgecolor": "white", "shrinkA": 0, "shrinkB": 0},
+        zorder=10, arrowprops={"arrowstyle": "simple", "mutation_scale": 24, "facecolor": INK,
+                               "edgecolor": "white", "shrinkA": 0, "shrinkB": 0},
     )
 
 
@@ -254,20 +261,23 @@ def draw_sensors(folder, case, table):
 
 
 def _draw_page(path, case, table, page):
+    from matplotlib.ticker import MultipleLocator
+
     figure = _figure(10.0, 1.2 + 2.4 * len(page))
     rows = figure.subplots(len(page), 2, sharex=True, squeeze=False)
-    order = np.argsort(table.angles % 360.0)
+    order, angles = _laid_out(table.angles)
     for (left, right), place in zip(rows, page, strict=True):
         for axes, column in zip((left, right), _columns(case, table, place), strict=True):
-            _draw_column(axes, table, place, order, *column)
+            _draw_column(axes, angles, table.trust[order, place], column, order)
         left.set_title(table.names[place], loc="left", fontsize=10, parse_math=False)
     for axes in rows[-1]:
         axes.set_xlabel(
             "bearing the wind comes from (degrees)" if case.by_bearing
             else "direction the stream goes to (degrees)"
         )
-        axes.set_xlim(0, 360)
-        axes.set_xticks(range(0, 361, 45))
+        axes.set_xlim(*_ends(angles))
+        axes.xaxis.set_major_locator(MultipleLocator(45 if np.ptp(angles) > 120 else 15))
+        axes.xaxis.set_major_formatter(lambda angle, _: f"{angle - 360 * (angle > 360):g}")
     figure.suptitle(_wrapped(case.title, 90), fontsize=12, parse_math=False)
     figure.supxlabel(
         "grey: not trusted     green: speed within 1 percent of the undisturbed", fontsize=9
@@ -293,28 +303,54 @@ def _columns(case, table, place):
         yield label, table.direction_error[:, place], DIRECTION, 0.0, None
 
 
-def _draw_column(axes, table, place, order, label, values, colour, undisturbed, band):
-    axes.set_ylabel(label, fontsize=8)
+def _draw_column(axes, angles, trust, column, order):
     axes.tick_params(labelsize=8)
-    values, trust = values[order], table.trust[order, place]
-    angles = table.angles[order] % 360.0
+    label, values, colour, undisturbed, band = column
+    values = values[order]
     if not np.isfinite(values).any():
         axes.set_yticks([])
         axes.text(0.5, 0.5, "not read", transform=axes.transAxes, ha="center", color="#808080")
         return
+    axes.set_ylabel(label, fontsize=8)
     steps = np.diff(angles)
-    step = np.median(steps) if steps.size else 1.0
-    for angle in angles[~trust]:
-        axes.axvspan(angle - step / 2, angle + step / 2, color=SHADE, linewidth=0)
+    step = min(np.median(steps), WIDEST_SHADE) if steps.size else WIDEST_SHADE
+    shaded = angles[~trust]
+    for block in np.split(shaded, np.flatnonzero(np.diff(shaded) > 1.5 * step) + 1):
+        if block.size:
+            axes.axvspan(block[0] - step / 2, block[-1] + step / 2, color=SHADE, linewidth=0)
     if band:
         axes.axhspan(undisturbed - band, undisturbed + band, color=BAND, linewidth=0, zorder=1.5)
     axes.axhline(undisturbed, color=INK, linewidth=0.8, linestyle=":")
     gaps = np.flatnonzero(steps > 1.5 * step) + 1
     for dots, shown in (("-", trust), (":", ~trust)):
         line = np.insert(np.where(shown, values, np.nan), gaps, np.nan)
-        axes.plot(np.insert(angles, gaps, np.nan), line, dots, color=colour,
-                  linewidth=1.4, marker="o" if len(angles) <= 40 else "", markersize=3)
+        axes.plot(np.insert(angles, gaps, np.nan), line, dots, color=colour, linewidth=1.4,
+                  marker="" if len(angles) > FEW else "o", markersize=3)
     axes.set_ylim(*_limits(values[trust], undisturbed, 2 * band if band else 0.5))
+
+
+def _laid_out(angles):
+    """The order in which the angles grow along the axis, and how they are counted there.
+
+    Winds of less than half a turn start after the gap, which may carry them across north.
+    """
+    turned = angles % 360.0
+    order = np.argsort(turned)
+    turned = turned[order]
+    gaps = np.diff(turned, append=turned[0] + 360.0)
+    cut = int(gaps.argmax()) + 1
+    if gaps[cut - 1] > 180.0:
+        turned = np.concatenate([turned[cut:], turned[:cut] + 360.0])
+        order = np.roll(order, -cut)
+    return order, turned
+
+
+def _ends(angles):
+    """Where the axis of the angles begins and ends."""
+    room = 5.0 if len(angles) <= FEW else 0.0
+    if np.ptp(angles) >= 180.0:
+        return -room, 360.0 + room
+    return angles[0] - room, angles[-1] + room
 
 
 def _limits(values, undisturbed, least):

@@ -21,6 +21,8 @@ DONE, REFUSED, INTERRUPTED = 0, 2, 130
 NODES_AT_ONCE = 20_000  # of a dense grid, between two moves of the progress bar
 
 EPILOG = """\
+Start from the case that `offbody demo` writes; `python -m pydoc offbody.cases` lists every key.
+
 exit status: 0 done; 2 the case, the command or the output folder cannot be used (one line on
 standard error says why, and nothing was written); 130 interrupted (nothing was written)."""
 
@@ -105,13 +107,12 @@ def _survey(options):
 
 
 def _demo(options):
-    source = resources.files("offbody") / "demo.toml"
-    with resources.as_file(source) as path:
+    with resources.as_file(reports.BUILT_IN_CASE) as path:
         case = read_case(path)
-    return _write_survey(case, options, case_text=source.read_text(encoding="utf-8"))
+    return _write_survey(case, options, source=reports.BUILT_IN_CASE)
 
 
-def _write_survey(case, options, case_text=None):
+def _write_survey(case, options, source=None):
     """Survey a case into a folder; returns what to print."""
     with reports.whole_folder(options.out, options.overwrite) as folder, _bar(5, "solving") as bar:
         with _cautions() as cautions:
@@ -123,8 +124,8 @@ def _write_survey(case, options, case_text=None):
         (folder / "summary.txt").write_text(page, encoding="utf-8")
         reports.write_csv(folder / "survey.csv", case, table)
         reports.write_json(folder / "survey.json", case, table)
-        if case_text is not None:
-            (folder / "case.toml").write_text(case_text, encoding="utf-8")
+        if source is not None:
+            (folder / "case.toml").write_bytes(source.read_bytes())
         no_pictures = charts.missing_library()
         if not no_pictures:
             _advance(bar, "drawing sensors")

@@ -8,29 +8,28 @@ velocity, dW/dz its gradient, and the integral of W along the wall the complex p
 import numpy as np
 from numpy.polynomial import legendre
 
-from offbody import _kernels
+from offbody import _kernels, images
+from offbody.images import Copies
 from offbody.panels import to_ends
 from offbody.parallel import over_chunks
+from offbody.surroundings import reflected
 
 OVER_TWO_PI_I = 1.0 / (2j * np.pi)
 
 
 def wall_influence(panels, surroundings):
-    """Tangential and normal velocity at the nodes, per unit strength at the nodes, just outside.
+    """Tangential velocity at the nodes, just outside, per unit strength at the nodes.
 
     Returns
     -------
-    tangential, normal : (N, N) arrays
-        Of the vortices.
-    source_tangential : (N, N) array
-        Of the sources (positive outward).
+    tangential, source_tangential : (N, N) arrays
+        Of the vortices, and of the sources (positive outward).
     """
-    real, imag = _node_influence(panels, panels.nodes, panels.tangents)
-    image = surroundings.mirrored(panels.nodes)
-    if image is None:
-        return real, imag, -imag
-    image_real, image_imag = _node_influence(panels, image, panels.tangents.conj())
-    return real + image_real, imag - image_imag, -(imag + image_imag)
+    tangential, _, source = images.matrices(
+        panels, surroundings, lambda z, turn: _node_influence(panels, z, turn),
+        panels.nodes, panels.tangents,
+    )
+    return tangential, source
 
 
 def _node_influence(panels, z, turn):
@@ -56,9 +55,10 @@ def velocity_by_matrix(panels, surroundings, strengths, z):
 
     The way for many strengths at few points: one evaluation of the panels serves them all.
     """
-    total = _by_matrix(panels, strengths, z)
-    image = surroundings.mirrored(z)
-    return total if image is None else total + _by_matrix(panels, strengths, image).conj()
+    charges = OVER_TWO_PI_I * panels.weights * strengths
+    return images.fields(
+        panels.copies, surroundings, lambda z: _by_matrix(panels, strengths, z), charges, z
+    )
 
 
 def _by_matrix(panels, strengths, z):
@@ -111,21 +111,21 @@ def potential(panels, surroundings, strengths, cuts, downstream, z):
             before = np.concatenate([[0.0], np.cumsum(turned)])
             rise[row, part, 0] += np.roll(before[:-1], shift)
             totals[row, body] = before[-1]
-    density = _from_coefficients(panels, rise)
+    total = _field(panels, surroundings, *_from_coefficients(panels, rise), z)
 
-    def one_side(z, downstream):
-        total = _sum(panels, *density, z)
+    def logarithms(z, downstream):
         for row in range(len(strengths)):
             for body in range(panels.bodies):
                 away = z - panels.ends[cuts[row, body], 0]
-                turn = np.exp(-1j * (downstream[row] + np.pi))
-                with np.errstate(divide="ignore"):
-                    total[row] -= totals[row, body] * np.log(away * turn)
-        return total
+                log = images.log_sinh(surroundings.period, away, downstream[row])
+                yield row, totals[row, body] * log
 
-    total = one_side(z, downstream)
-    image = surroundings.mirrored(z)
-    return total if image is None else total + one_side(image, -downstream).conj()
+    for row, part in logarithms(z, downstream):
+        total[row] -= part
+    if surroundings.mirror is not None:
+        for row, part in logarithms(reflected(surroundings, z), -downstream):
+            total[row] -= part.conj()
+    return total
 
 
 def _at_places(panels, strengths):
@@ -179,7 +179,7 @@ def _gradient_of_constant(panels, surroundings, strengths, z):
         jumps[:, part] -= np.roll(wall[:, part], 1, axis=1)
     corners = np.ascontiguousarray(panels.ends[:, 0])
 
-    def one_side(z):
+    def free(z):
         out = np.zeros((len(strengths), len(z)), complex)
         over_chunks(
             lambda part: _kernels.point_field(corners, jumps, z[part], out[:, part]),
@@ -187,14 +187,14 @@ def _gradient_of_constant(panels, surroundings, strengths, z):
         )
         return out
 
-    image = surroundings.mirrored(z)
-    return one_side(z) if image is None else one_side(z) + one_side(image).conj()
+    copies = Copies.of(corners, surroundings.period)
+    return images.fields(copies, surroundings, free, jumps, z)
 
 
 def _field(panels, surroundings, coefficients, charges, z):
-    total = _sum(panels, coefficients, charges, z)
-    image = surroundings.mirrored(z)
-    return total if image is None else total + _sum(panels, coefficients, charges, image).conj()
+    return images.fields(
+        panels.copies, surroundings, lambda z: _sum(panels, coefficients, charges, z), charges, z
+    )
 
 
 def _sum(panels, coefficients, charges, z):

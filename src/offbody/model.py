@@ -23,12 +23,13 @@ from offbody import flow
 from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
 from offbody.errors import InputError
 from offbody.outlines import Outline
-from offbody.panels import lay
-from offbody.surroundings import Ground, OpenStream
+from offbody.panels import lay, to_modes
+from offbody.surroundings import KINDS, OpenStream, holds
 from offbody.tracing import trace
 from offbody.wakes import Wake, profile
 
 DEFAULT_ORDER = 16
+ALONG_ROW = 1e-11  # the cosine of an angle that is 90 degrees
 BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way
 
 
@@ -39,7 +40,7 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
     ----------
     outlines : Outline or sequence of Outline
         The bodies, clear of one another.
-    surroundings : OpenStream or Ground, optional
+    surroundings : OpenStream, Ground, Duct or Row, optional
         What stands round them; an open stream unless given.
     panels : int or sequence, optional
         Panels per body (one number for each, or one for all; None within a sequence lets the
@@ -76,9 +77,10 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
     """
     bodies = _as_outlines(outlines)
     surroundings = OpenStream() if surroundings is None else surroundings
-    if not isinstance(surroundings, (OpenStream, Ground)):
+    if not isinstance(surroundings, KINDS):
         raise InputError(
-            f"surroundings = {surroundings!r}: give ob.OpenStream() or ob.Ground(y)"
+            f"surroundings = {surroundings!r}: give ob.OpenStream(), ob.Ground(y), "
+            "ob.Duct(lower, upper) or ob.Row(pitch)"
         )
     order = DEFAULT_ORDER if order is None else as_count("order", order, least=1, greatest=16)
     counts = [
@@ -159,7 +161,7 @@ class Model:
     Attributes
     ----------
     outlines : tuple of Outline
-    surroundings : OpenStream or Ground
+    surroundings : OpenStream, Ground, Duct or Row
     wakes : tuple of Wake or None
     order, node_count : int
     panel_counts : tuple of int, per body
@@ -204,18 +206,18 @@ class Model:
 
     def _factorise(self):
         panels = self._panels
-        tangential, _, source = flow.wall_influence(panels, self.surroundings)
+        tangential, source = flow.wall_influence(panels, self.surroundings)
         self._source_tangential = source if any(self.wakes) else None
         tangential[np.diag_indices_from(tangential)] -= 1.0
         for body, length in enumerate(self._lengths):
             part = panels.node_slice(body)
+            tangential[part] -= self._mean(tangential, body)
             tangential[part, part] -= panels.weights[part] / length
         self._root = np.sqrt(panels.weights)
         self._factors = lu_factor(
             tangential * (self._root[:, None] / self._root), overwrite_a=True, check_finite=False
         )
-        tangents = panels.tangents
-        self._unit = self._unknown(-np.stack([tangents.real, tangents.imag]))
+        self._unit = self._unknown(-_pairs(panels.tangents).T)
         free = [
             body for body, given in enumerate(self._prescribed)
             if given not in (None, 0.0) or (given is None and self._has_edge(body))
@@ -223,14 +225,27 @@ class Model:
         self._turning = free
         self._spin = np.zeros((len(free), self.node_count))
         if free:
-            right = np.zeros((len(free), self.node_count))
-            for row, body in enumerate(free):
-                right[row, panels.node_slice(body)] = -1.0 / self._lengths[body]
-            self._spin = self._unknown(right)
+            circulation = np.eye(panels.bodies)[free]
+            self._spin = self._unknown(np.zeros_like(self._spin), circulation)
 
-    def _unknown(self, right):
-        """gamma (R, N) for right-hand sides (R, N)."""
-        scaled = (right * self._root).T
+    def _mean(self, rows, body):
+        """Mean over a body's wall, by arc length, of (N, ...) rows.
+
+        There is no circulation inside a body: this mean of the equation is zero but for the error
+        of the panels. Without that error the circulation is what the right-hand side says, exactly.
+        """
+        part = self._panels.node_slice(body)
+        return self._panels.weights[part] @ rows[part] / self._lengths[body]
+
+    def _unknown(self, onset_part, circulation=None):
+        """gamma (R, N) for right-hand sides (R, N), and circulations (R, bodies) or none."""
+        right = onset_part.T.copy()
+        for body, length in enumerate(self._lengths):
+            part = self._panels.node_slice(body)
+            right[part] -= self._mean(right, body)
+            if circulation is not None:
+                right[part] -= circulation[:, body] / length
+        scaled = right * self._root[:, None]
         return lu_solve(self._factors, scaled, check_finite=False).T / self._root
 
     def _has_edge(self, body):
@@ -245,44 +260,82 @@ class Model:
                 columns.append(gamma[..., part.start] + gamma[..., part.stop - 1])
         return np.stack(columns, axis=-1) if columns else np.zeros(gamma.shape[:-1] + (0,))
 
-    def _strengths(self, directions):
-        """Strengths for a vector of directions, as few rows as will do, and how to combine them.
+    def _state(self, directions):
+        """Strengths for a vector of directions, as few rows as will do, and the onset there.
 
-        Returns rows (R, N), real or complex, and either None (a row for each direction) or the
-        matrix (directions, R) that combines fields of the rows.
+        Returns rows (R, N), real or complex; None (a row for each direction) or the matrix
+        (directions, R) that combines fields of the rows; and the onset u - i v (directions,) at
+        which images that move the stream far upstream (see _shift) leave it as it was given.
         """
         if any(self.wakes):
-            return self._with_wakes(directions), None
+            blown = self._wall_normal_speeds(directions)
+            moved = self._unknown(-(blown @ self._source_tangential.T))
+            onset, circulations = self._onset(directions, blown @ self._panels.weights, moved)
+            gamma = onset @ self._unit + moved + circulations @ self._spin
+            return gamma + 1j * blown, None, onset @ [1.0, -1j]
+        onset, circulations = self._onset(directions, np.zeros(len(directions)), None)
         rows = np.concatenate([self._unit, self._spin])
-        combination = np.concatenate(
-            [_components(directions), self._circulations(directions, None)], axis=1
-        )
+        combination = np.concatenate([onset, circulations], axis=1)
         if len(directions) < len(rows):
-            return combination @ rows, None
-        return rows, combination
+            return combination @ rows, None, onset @ [1.0, -1j]
+        return rows, combination, onset @ [1.0, -1j]
 
-    def _circulations(self, directions, wake_part):
-        """(directions, turning bodies): prescribed, or by the Kutta condition."""
+    def _onset(self, directions, flux, moved):
+        """(directions, 2) onset and (directions, turning bodies) circulations.
+
+        Circulations are prescribed or follow from the Kutta condition; flux (directions,) is that
+        of all wakes and moved (directions, N) what they do to gamma.
+        """
+        given = _components(directions)
+        shift = self._shift(given)
+        onset = given + flux[:, None] * shift[:, :, 1]
         result = np.zeros((len(directions), len(self._turning)))
-        edges = [k for k, b in enumerate(self._turning) if self._prescribed[b] is None]
+        edges = []
         for k, body in enumerate(self._turning):
-            if self._prescribed[body] is not None:
+            if self._prescribed[body] is None:
+                edges.append(k)
+            else:
                 result[:, k] = self._prescribed[body]
+        self._refuse_along(given, flux, result, edges)
+        onset = onset + result.sum(axis=1)[:, None] * shift[:, :, 0]
         if edges:
-            base = _components(directions) @ self._kutta(self._unit)
-            if wake_part is not None:
-                base = base + self._kutta(wake_part)
-            influence = self._kutta(self._spin)
-            base = base + result @ influence
-            result[:, edges] = -np.linalg.solve(influence[edges].T, base.T).T
-        return result
+            unit, spin = self._kutta(self._unit), self._kutta(self._spin)
+            miss = onset @ unit + result @ spin
+            if moved is not None:
+                miss = miss + self._kutta(moved)
+            system = spin[edges] + (shift[:, :, 0] @ unit)[:, None, :]
+            found = np.linalg.solve(np.swapaxes(system, 1, 2), -miss[..., None])[..., 0]
+            result[:, edges] = found
+            onset = onset + found.sum(axis=1)[:, None] * shift[:, :, 0]
+        return onset, result
 
-    def _with_wakes(self, directions):
-        blown = self._wall_normal_speeds(directions)
-        moved = self._unknown(-(blown @ self._source_tangential.T))
-        gamma = _components(directions) @ self._unit + moved
-        gamma = gamma + self._circulations(directions, moved) @ self._spin
-        return gamma + 1j * blown
+    def _shift(self, onset):
+        """(directions, 2, 2): what a unit circulation, a unit source must add to the onset.
+
+        Copies without end move the stream even far upstream, by half of what they turn it in all;
+        the onset far upstream is to be the one that the caller gave. With a mirror circulations
+        cancel and sources double.
+        """
+        shift = np.zeros((len(onset), 2, 2))
+        if self.surroundings.period is not None:
+            side = np.where(np.abs(onset[:, 0]) > ALONG_ROW, np.sign(onset[:, 0]), 0.0)
+            half = 0.5 * side / self.surroundings.period
+            if self.surroundings.mirror is None:
+                shift[:, 1, 0] = half
+                shift[:, 0, 1] = half
+            else:
+                shift[:, 0, 1] = 2.0 * half
+        return shift
+
+    def _refuse_along(self, onset, flux, prescribed, edges):
+        """A stream along a row has no far upstream: nothing may turn it or push it aside."""
+        along = np.abs(onset[:, 0]) <= ALONG_ROW
+        turns = bool(edges) or (prescribed != 0.0).any()
+        if self.surroundings.period and along.any() and (turns or (flux[along] > 0.0).any()):
+            raise InputError(
+                "direction = 90 or -90: along a row the stream has no far upstream where there is "
+                "circulation or a wake; use another direction, or bodies without both"
+            )
 
     def _wall_normal_speeds(self, directions):
         """(directions, N) outward normal speed on the walls."""
@@ -311,29 +364,47 @@ class Model:
 
         On a side that runs along the stream, its upstream end.
         """
-        part = self._panels.node_slice(body)
-        nodes, tangents = self._panels.nodes[part], self._panels.tangents[part]
-        arcs, total = self._panels.arcs[part], self._arcs[body].length
-        stream = np.exp(1j * np.radians(directions))[:, None]
-        along, across = (nodes / stream).real, (nodes / stream).imag
-        crossing = (tangents / stream).imag
-        result = np.empty((len(directions), 2))
-        rows = np.arange(len(directions))
+        nodes = _pairs(self._panels.nodes[self._panels.node_slice(body)])
+        stream = _components(directions)
+        along, across = stream @ nodes.T, stream @ (nodes @ [[0.0, -1.0], [1.0, 0.0]]).T
         room = 1e-9 * np.ptp(across, axis=1)[:, None]
-        for side, sign in enumerate((1.0, -1.0)):
-            height = sign * across
+        result = np.empty((len(directions), 2))
+        for side, height in enumerate((across, -across)):
             ties = height >= height.max(axis=1, keepdims=True) - room
             k = np.argmin(np.where(ties, along, np.inf), axis=1)
-            # The turning point lies before or after node k, by the sign of the slope there; the
-            # slope's linear interpolation finds it.
-            step = np.where(sign * crossing[rows, k] > 0.0, 1, -1)
-            other = (k + step) % len(nodes)
-            here, there = crossing[rows, k], crossing[rows, other]
-            gap = (arcs[other] - arcs[k] + 0.5 * total) % total - 0.5 * total
-            turns = here * there < 0.0
-            share = np.where(turns, here / np.where(turns, here - there, 1.0), 0.0)
-            result[:, side] = (arcs[k] + share * gap) % total
+            result[:, side] = self._turning_arc(body, k, stream @ [1.0, 1j])
         return result
+
+    def _turning_arc(self, body, k, stream):
+        """Arc positions near nodes k of a body where its tangent runs along the stream.
+
+        The tangent is the polynomial of node k's panel; Newton's method starts from the node and
+        goes no farther than the next one, and a sharp edge stops it.
+        """
+        panels, order = self._panels, self.order
+        arcs = panels.arcs[panels.node_slice(body)]
+        total, count = self._arcs[body].length, len(arcs)
+        if order == 1:
+            return arcs[k]
+        panel = k // order + panels.starts[body]
+        modes = panels.tangents.reshape(-1, order)[panel] @ to_modes(order).T
+        modes = (modes / stream[:, None]).imag
+        middle, half = panels.end_arcs[panel].mean(axis=1), 0.5 * np.diff(panels.end_arcs[panel])
+        half = half[:, 0]
+        x = start = (arcs[k] - middle) / half
+        before = np.where(k > 0, arcs[k - 1], 0.0 if panels.edged[body] else arcs[-1] - total)
+        after = np.where(
+            k < count - 1, arcs[(k + 1) % count],
+            total if panels.edged[body] else arcs[0] + total,
+        )
+        low, high = (before - middle) / half, (after - middle) / half
+        for _ in range(4):
+            values = legendre.legvander(x, order - 1)
+            slope = np.sum(legendre.legder(modes, axis=1) * values[:, :-1], axis=1)
+            with np.errstate(divide="ignore", invalid="ignore"):
+                step = np.sum(modes * values, axis=1) / slope
+            x = np.clip(np.where(np.isfinite(step), x - step, start), low, high)
+        return (middle + half * x) % total
 
     def _lee(self, body, directions):
         """Start (counter-clockwise) and length of the lee wall, between the widest points."""
@@ -367,10 +438,7 @@ class Model:
     def _wall_speed_at(self, body, gamma, arcs):
         """gamma (..., N) interpolated on its panel at arc positions (k,): (..., k)."""
         k, x = self._panel_at(body, arcs)
-        to_modes = np.linalg.inv(
-            legendre.legvander(legendre.leggauss(self.order)[0], self.order - 1)
-        )
-        weights = legendre.legvander(x, self.order - 1) @ to_modes
+        weights = legendre.legvander(x, self.order - 1) @ to_modes(self.order)
         columns = k[:, None] * self.order + np.arange(self.order)
         return np.sum(gamma[..., columns] * weights, axis=-1)
 
@@ -426,16 +494,21 @@ class Model:
 
     def _velocity(self, z, directions, mask=True):
         """(directions, len(z)) complex velocity u - i v."""
-        rows, combination = self._strengths(directions)
+        rows, combination, onset = self._state(directions)
         evaluate = flow.velocity if len(rows) < BY_MATRIX else flow.velocity_by_matrix
         fields = evaluate(self._panels, self.surroundings, rows, z)
         total = fields if combination is None else combination @ fields
-        total = total + np.exp(-1j * np.radians(directions))[:, None]
+        total = total + onset[:, None]
         return self._masked(total, z) if mask else total
 
     def _masked(self, values, z):
-        values[:, flow.enclosing_body(self._panels, z) >= 0] = np.nan
+        nowhere = (flow.enclosing_body(self._panels, self._home(z)) >= 0)
+        values[:, nowhere | ~holds(self.surroundings, z)] = np.nan
         return values
+
+    def _home(self, z):
+        """Points moved by whole periods, where there are any, to where the bodies stand."""
+        return z if self._panels.copies is None else self._panels.copies.home(z)
 
     def velocity_gradient(self, points, direction=0.0):
         """(..., 2, 2) d(u, v)/d(x, y) at points (..., 2), per unit of length; NaN inside a body.
@@ -449,7 +522,7 @@ class Model:
         """
         points, directions = as_points("points", points), self._directions(direction)
         z, flat = _complex(points).ravel(), np.atleast_1d(directions)
-        rows, combination = self._strengths(flat)
+        rows, combination, _ = self._state(flat)
         fields = flow.gradient(self._panels, self.surroundings, rows, z)
         total = self._masked(fields if combination is None else combination @ fields, z)
         gradient = np.stack(
@@ -484,13 +557,13 @@ class Model:
         """
         points, directions = as_points("points", points), self._directions(direction)
         z, flat = _complex(points).ravel(), np.atleast_1d(directions)
-        rows, combination = self._strengths(flat)
+        rows, combination, onset = self._state(flat)
         along = np.radians(flat) if combination is None else np.zeros(len(rows))
         fields = flow.potential(
             self._panels, self.surroundings, rows, self._rearmost(along), along, z
         ).imag
         total = fields if combination is None else combination @ fields
-        total = total + (z * np.exp(-1j * np.radians(flat))[:, None]).imag
+        total = total + (z * onset[:, None]).imag
         return _shaped(self._masked(total, z).reshape((len(flat),) + points.shape[:-1]), directions)
 
     def _rearmost(self, along):
@@ -526,7 +599,7 @@ class Model:
 
     def _wall_speeds(self, directions):
         """(directions, N) signed surface speed."""
-        rows, combination = self._strengths(directions)
+        rows, combination, _ = self._state(directions)
         return (rows if combination is None else combination @ rows).real
 
     def wall_normal_speed(self, body, direction=0.0):
@@ -580,7 +653,7 @@ class Model:
         """
         directions = self._directions(direction)
         flat = np.atleast_1d(directions)
-        rows, combination = self._strengths(flat)
+        rows, combination, _ = self._state(flat)
         strengths = rows if combination is None else combination @ rows
         moment = strengths**2 * self._panels.tangents.conj() * self._panels.weights
         first = self._panels.starts[:-1] * self.order

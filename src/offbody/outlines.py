@@ -13,14 +13,17 @@ from pathlib import Path
 
 import numpy as np
 from numpy.polynomial import chebyshev, legendre, polynomial
-from scipy.interpolate import PPoly, make_interp_spline
+from scipy.interpolate import BSpline, PPoly, make_interp_spline
+from scipy.sparse import csc_array
+from scipy.sparse.linalg import splu
 
-from offbody.checks import as_count, as_number, as_point, as_points
+from offbody.checks import as_count, as_number, as_point, as_points, as_reals
 from offbody.errors import AccuracyWarning, InputError
 
 TOUCH = 1e-9          # parts of a wall nearer than this fraction of the body's size touch
 STRAIGHT = 1e-9       # radians: a corner that turns less is none
 ARC_LENGTH_STEPS = 2  # of the parameter of a spline from chord lengths to its own arc length
+FEW = 20              # points of an outline with an edge: a quintic through fewer swings there
 CORNER = 1.0          # degrees: a wall that turns less at a point has no corner there, only a join
 ROUNDING = 2.0**-52
 
@@ -95,12 +98,17 @@ class Outline:
         -------
         complex array of the same shape
 
+        Raises
+        ------
+        ob.InputError
+            If a parameter is not a finite number.
+
         Examples
         --------
         >>> complex(circle(2.0).position(0.0))
         (1+0j)
         """
-        return self.factor * self.shape.position(_wrapped(s)) + self.shift
+        return self.factor * self.shape.position(_wrapped(as_reals("s", s))) + self.shift
 
     def derivative(self, s):
         """Derivative of `position` by the parameter: along the wall, body to the left.
@@ -115,12 +123,17 @@ class Outline:
         -------
         complex array of the same shape
 
+        Raises
+        ------
+        ob.InputError
+            If a parameter is not a finite number.
+
         Examples
         --------
         >>> complex(circle(2.0).derivative(0.0) / (2 * np.pi))
         1j
         """
-        return self.factor * self.shape.derivative(_wrapped(s))
+        return self.factor * self.shape.derivative(_wrapped(as_reals("s", s)))
 
     def points(self, count=200):
         """Points along the outline, for pictures; evenly spaced in the parameter.
@@ -133,6 +146,11 @@ class Outline:
         Returns
         -------
         (count, 2) array
+
+        Raises
+        ------
+        ob.InputError
+            If the count is not a whole number of at least 1.
 
         Examples
         --------
@@ -354,7 +372,7 @@ def polygon(points, corner_radius):
     Returns
     -------
     Outline
-        Its first point is the middle of the first corner's arc.
+        Arc fractions count from the middle of the first corner's arc.
 
     Raises
     ------
@@ -382,12 +400,13 @@ def polygon(points, corner_radius):
     reach = _tangent_reach(corner, order)
     _refuse_unfit_radius(radius, corner, order, reach)
     shape = _rounded(corner, side / np.abs(side), reach, radius)
-    changes = np.diff(shape.curvatures) != 0
+    joins = shape.breaks[:-1][shape.curvatures != np.roll(shape.curvatures, 1)]
+    start = 0.5 * shape.breaks[1] if order[0] == 0 else _nearest_parameter(shape, given[0])
     result = Outline(
         shape,
         f"polygon of {len(corner)} corners with corner radius {radius:g}",
-        joins=tuple(shape.breaks[1:-1][changes].tolist()),
-        start=0.0 if order[0] == 0 else _nearest_parameter(shape, given[0]),
+        joins=tuple(joins.tolist()),
+        start=float(start),
     )
     _refuse_crossing(result, _arc_samples(shape))
     return result
@@ -433,28 +452,20 @@ def _refuse_unfit_radius(radius, corner, order, reach):
 
 
 def _rounded(corner, heading, reach, radius):
-    """The pieces of a rounded polygon, from the middle of the first corner's arc."""
-    turning = _turning(corner)
-    into = np.roll(heading, 1)
-    reach = radius * reach
+    """The pieces of a rounded polygon, from the beginning of the first corner's arc."""
+    turning, into, reach = _turning(corner), np.roll(heading, 1), radius * reach
     side = np.abs(np.roll(corner, -1) - corner) - reach - np.roll(reach, -1)
-    middle = corner[0] + radius * 1j * np.sign(turning[0]) * (
-        into[0] * _unit(turning[0] / 2) * (1 / math.cos(turning[0] / 2) - 1)
-    )
-    # Every corner gives an arc and a side; the first arc is cut in its middle, where s = 0.
+    # Every corner gives an arc and a side.
     starts = np.stack([corner - reach * into, corner + reach * heading], axis=1).ravel()
     headings = np.stack([into, heading], axis=1).ravel()
     curvatures = np.stack([np.sign(turning) / radius, np.zeros(len(corner))], axis=1).ravel()
     lengths = np.stack([radius * np.abs(turning), side], axis=1).ravel()
-    starts = np.concatenate([[middle], starts[1:], starts[:1]])
-    headings = np.concatenate([[into[0] * _unit(turning[0] / 2)], headings[1:], headings[:1]])
-    curvatures = np.concatenate([curvatures, curvatures[:1]])
-    lengths = np.concatenate([[lengths[0] / 2], lengths[1:], [lengths[0] / 2]])
     # Arcs that use up a side leave a remainder of rounding, which is no side.
     real = lengths > 1e-12 * lengths.sum()
-    ends = np.cumsum(lengths[real])
-    breaks = np.concatenate([[0.0], ends / ends[-1]])
-    return _Arcs(breaks, starts[real], headings[real], curvatures[real], float(ends[-1]))
+    breaks = _fractions(lengths[real])
+    return _Arcs(
+        breaks, starts[real], headings[real], curvatures[real], float(lengths[real].sum())
+    )
 
 
 def _nearest_parameter(shape, point):
@@ -502,8 +513,8 @@ def outline(points, sharp=None):
     Returns
     -------
     Outline
-        A spline of degree five (three through very few points) whose parameter is its own
-        arc length to within a small fraction. Its first point is the first of `points`.
+        A spline of degree five (three through fewer than 20 points with an edge), its parameter
+        close to arc length. Its first point is the first of `points`.
 
     Raises
     ------
@@ -552,34 +563,45 @@ def outline(points, sharp=None):
 def _closed_spline(z, smooth):
     """The spline from the first point round to it again, and the points' parameters."""
     closed = np.append(z, z[0])
-    degree = 5 if len(z) >= 5 else 3
     lengths = np.abs(np.diff(closed))
+    nodes, weights = legendre.leggauss(6)
     for _ in range(ARC_LENGTH_STEPS + 1):
         parameters = _fractions(lengths)
-        spline = _interpolant(parameters, closed, degree, smooth)
+        spline = _interpolant(parameters, closed, smooth)
         half = 0.5 * np.diff(parameters)[:, None]
-        nodes, weights = legendre.leggauss(6)
         speeds = np.abs(spline.derivative(parameters[:-1, None] + half * (nodes + 1)))
         lengths = (speeds * half) @ weights
     return spline, parameters
 
 
-def _interpolant(parameters, z, degree, smooth):
-    """The spline through z, periodic where it is smooth, as polynomials on pieces of [0, 1]."""
-    found = make_interp_spline(
-        parameters,
-        np.stack([z.real, z.imag], axis=-1),
-        k=degree,
-        bc_type="periodic" if smooth else None,
-    )
-    ends = np.unique(found.t[(found.t >= 0) & (found.t <= 1)])
-    powers = range(degree, -1, -1)
-    taylor = [found(ends[:-1], power) @ [1, 1j] / math.factorial(power) for power in powers]
-    pieces = PPoly(np.array(taylor), ends)
+def _interpolant(parameters, z, smooth):
+    """The spline through z, as polynomials on pieces of [0, 1]."""
+    xy = np.stack([z.real, z.imag], axis=-1)
+    if smooth:
+        found = _periodic_quintic(parameters, xy)
+    elif len(z) > FEW:
+        found = make_interp_spline(parameters, xy, k=5)
+    else:
+        found = make_interp_spline(parameters, xy, k=3, bc_type="natural")
+    knots = np.unique(found.t[(found.t >= 0) & (found.t <= 1)])
+    taylor = [found(knots[:-1], m) @ [1, 1j] / math.factorial(m) for m in range(found.k, -1, -1)]
+    pieces = PPoly(np.array(taylor), knots)
     return _Spline(pieces, pieces.derivative())
 
 
-# --- a curve given as a function -------------------------------------------------------------------
+def _periodic_quintic(parameters, xy):
+    """The B-spline of period 1 with knots at the points: one sparse system for x and y."""
+    count = len(parameters) - 1
+    place = np.arange(-5, count + 6)
+    knots = parameters[place % count] + place // count
+    values = BSpline.design_matrix(parameters[:-1], knots, 5).tocoo()
+    columns = values.col % count
+    matrix = csc_array((values.data, (values.row, columns)), shape=(count, count))
+    coefficients = splu(matrix).solve(xy[:-1])
+    return BSpline(knots, coefficients[np.arange(count + 5) % count], 5)
+
+
+# --- a curve given as a function ------------------------------------------------------------------
 
 # A curve's derivative is that of Chebyshev interpolants of one degree, on pieces which are bisected
 # until their last coefficients reach the rounding of the function. Bisecting piles up where the
@@ -587,8 +609,10 @@ def _interpolant(parameters, z, degree, smooth):
 # in says whether the curve is open, has a corner, or joins two smooth parts, which then end there.
 DEGREE = 20
 FIRST_PIECES = 16
+GOLDEN = 0.6180339887       # pieces end where no caller's own piece is likely to end: it would hide
 DEEPEST = 45                # bisections of [0, 1]
 MOST_PIECES = 20_000
+SAME = 1e-9                 # parameters as close as that name the same edge
 SUSPECT_TURN = 0.35         # radians between neighbouring chords: a corner is looked for
 CHEBYSHEV_POINTS = np.sin(np.pi * (np.arange(DEGREE + 1) / DEGREE - 0.5))
 TO_COEFFICIENTS = np.linalg.inv(chebyshev.chebvander(CHEBYSHEV_POINTS, DEGREE)).T
@@ -736,7 +760,7 @@ def _resolved(shape, edge, kind):
         room = min(1 / FIRST_PIECES, 0.9 * np.min(away[away > 0], initial=1.0))
         join = _join(shape, place, doubt, room, kind)
         if join is not None:
-            joins.append(join % 1.0)
+            joins.append(float(join) % 1.0)
     breaks, series = _bisected(shape, fixed + joins, kind)
     slopes = chebyshev.chebder(series, axis=1) * (2 / np.diff(breaks))[:, None]
     return replace(shape, breaks=breaks, coefficients=slopes), tuple(sorted(joins))
@@ -744,7 +768,7 @@ def _resolved(shape, edge, kind):
 
 def _warn_of_scatter(shape, kind):
     """Refuse a function whose values scatter too much for tangents, and warn of a rounded one."""
-    left = (np.arange(9) + 0.6180339887) / 9
+    left = (np.arange(9) + GOLDEN) / 9
     noise, size = _noise(shape, left, 2.0**-20, kind).max(), _size(shape.position(left))
     if noise > 1e-6 * size:
         raise InputError(f"{kind} is not smooth anywhere: its points scatter by {noise:.1g}")
@@ -793,8 +817,8 @@ def _fit(shape, left, right, kind):
 
 def _bisected(shape, fixed, kind):
     """Ends of pieces that resolve the curve, the fixed ones among them, and their coefficients."""
-    even = np.linspace(0, 1, FIRST_PIECES + 1)
-    apart = [x for x in even[1:-1] if all(abs(x - f) > 0.25 / FIRST_PIECES for f in fixed)]
+    even = (np.arange(FIRST_PIECES) + GOLDEN) / FIRST_PIECES
+    apart = [x for x in even if all(abs(x - f) > 0.25 / FIRST_PIECES for f in fixed)]
     ends = np.unique([0.0, *fixed, *apart, 1.0])
     left, right = ends[:-1], ends[1:]
     done = []
@@ -829,7 +853,8 @@ def _crowded_places(breaks, fixed):
         around = level[max(first - 12, 0) : last + 12]
         valley = level[first] < min(level[first - 1], level[last])
         low, high = breaks[first], breaks[last]
-        if valley and level[first] <= around.max() - 3 and not any(low <= f <= high for f in fixed):
+        known = any(low - SAME <= f <= high + SAME for f in fixed)
+        if valley and level[first] <= around.max() - 3 and not known:
             places.append((0.5 * (low + high), 0.5 * (high - low)))
     return places
 
@@ -885,14 +910,14 @@ def _sides(shape, place, doubt, room, kind):
 
 
 def _shown_parameter(shape, s):
-    """The parameter as the caller's function knows it, to nine digits."""
-    s = (1.0 - s if shape.backward else s) % 1.0
-    return f"{s:.9g}"
+    """The parameter as the caller's function knows it, to ten digits."""
+    s = round(1.0 - s if shape.backward else s, 10) % 1.0
+    return f"{s:.10g}"
 
 
 def _corner_error(kind, shown, z):
     return InputError(
-        f"{kind} has a sharp corner at s = {shown}, near {_place(z)}, which sharp does not name; "
+        f"{kind} has a sharp corner near s = {shown}, at {_place(z)}, which sharp does not name; "
         "name it if it is the one trailing edge, or else round it"
     )
 
@@ -900,12 +925,12 @@ def _corner_error(kind, shown, z):
 def _refuse_corners(result, s):
     """Refuse corners at which the speed along the curve vanishes, so that no derivative jumps."""
     z = result.position(s)
-    least = 1e-6 * _size(z)
-    kept = np.flatnonzero(np.abs(np.roll(z, -1) - z) > least)
+    finest = 1e-9 * _size(z) + 1e4 * ROUNDING * np.abs(z).max()
+    kept = np.flatnonzero(np.abs(np.roll(z, -1) - z) > 1e-6 * _size(z))
     s, z = s[kept], z[kept]
     for k in np.flatnonzero(np.abs(_turning(z)) > SUSPECT_TURN):
         low, high = s[k - 1], s[(k + 1) % len(s)]
-        corner = _sharpest(result, low, low + (high - low) % 1.0, least)
+        corner = _sharpest(result, low, low + (high - low) % 1.0, finest)
         if corner is None or _same_place(corner, result.edge):
             continue
         raise _corner_error(
@@ -913,8 +938,8 @@ def _refuse_corners(result, s):
         )
 
 
-def _sharpest(result, low, high, least):
-    """The parameter of a turn that stays within a piece shorter than ``least``, or None."""
+def _sharpest(result, low, high, finest):
+    """The parameter of a turn that stays within a piece shorter than ``finest``, or None."""
     while True:
         s = np.linspace(low, high, 17)
         step = np.diff(result.position(s))
@@ -923,7 +948,7 @@ def _sharpest(result, low, high, least):
         if turn[k] < SUSPECT_TURN / 2:
             return None
         low, high = s[k], s[k + 2]
-        if np.abs(step[k : k + 2]).max() < least:
+        if np.abs(step[k : k + 2]).max() < finest:
             return float(s[k + 1]) % 1.0
 
 
@@ -937,12 +962,13 @@ def _same_place(s, edge):
 # last coefficient changed from 0.1015 to close the trailing edge). It has the factors xi and
 # 1 - xi; what is left is kept apart, so that nothing cancels near the edge.
 HALF_THICKNESS = np.array([0, 0.2969, -0.1260, 0, -0.3516, 0, 0.2843, 0, -0.1036])
+GREATEST_BEND = 0.5     # half-thickness over radius of curvature of the camber line; a fold is at 1
 BETWEEN_ROOTS = np.array([0.2969, 0.1709, 0.1709, -0.1807, -0.1807, 0.1036, 0.1036])
 
 
 @dataclass(frozen=True, slots=True)
 class _FourDigit:
-    """Upper side from the trailing edge to the nose, x = xi^2 with xi = 1 - 2 s, then back below."""
+    """Above from the trailing edge to the nose, x = xi^2 with xi = 1 - 2 s, then back below."""
 
     camber: float       # over the chord
     highest: float      # place of greatest camber, over the chord
@@ -1049,10 +1075,10 @@ def four_digit(code, chord=1.0):
         )
     chord = as_number("chord", chord, positive=True)
     shape = _FourDigit(camber, highest, thickness, chord)
-    if shape.greatest_bend() >= 1:
+    if shape.greatest_bend() > GREATEST_BEND:
         raise InputError(
-            f"code = {code!r}: the camber line bends more than the thickness allows, so that the "
-            "wall would fold; use less camber or thickness, or move the camber aft"
+            f"code = {code!r}: the camber line bends too much for the thickness, so that the wall "
+            "would fold or nearly so; use less camber or thickness, or move the camber aft"
         )
     turns = () if camber == 0 else (0.5 * (1 - math.sqrt(highest)), 0.5 * (1 + math.sqrt(highest)))
     result = Outline(
@@ -1077,7 +1103,8 @@ def _four_digits(code):
 
 GEOMETRY = re.compile(
     r"\s*(SRID\s*=\s*\d+\s*;)?\s*"
-    r"(MULTI)?(POINT|LINESTRING|POLYGON|CURVE|SURFACE|LINEARRING|TRIANGLE)\b",
+    r"(MULTI)?(POINT|LINESTRING|POLYGON|CURVE|SURFACE|LINEARRING|TRIANGLE)\s*"
+    r"(Z|M|ZM)?\s*(\(|EMPTY\b)",
     re.IGNORECASE,
 )
 POLYGON = re.compile(r"\s*POLYGON\s*\(\s*\(([^()]*)\)\s*\)\s*;?\s*", re.IGNORECASE)
@@ -1123,8 +1150,8 @@ def read_outline(path, corner_radius=None, sharp=None):
     """
     if corner_radius is not None and sharp is not None:
         raise InputError("corner_radius makes a polygon, sharp a curve: give one of the two")
-    text = _read_text(path)
-    points = _read_polygon(path, text) if _is_geometry(text) else _read_columns(path, text)
+    text = _without_comments(_read_text(path))
+    points = _read_polygon(path, text) if GEOMETRY.match(text) else _read_columns(path, text)
     try:
         made = outline(points, sharp) if corner_radius is None else polygon(points, corner_radius)
     except InputError as error:
@@ -1150,19 +1177,16 @@ def _read_text(path):
     return text
 
 
-def _is_geometry(text):
-    lines = [line for line in text.splitlines() if not _is_comment(line)]
-    return bool(lines) and GEOMETRY.match(lines[0]) is not None
-
-
-def _is_comment(line):
-    return not line.strip() or line.lstrip().startswith("#")
+def _without_comments(text):
+    """The text with blank lines in place of comments, so that lines keep their numbers."""
+    lines = text.splitlines()
+    return "\n".join("" if line.lstrip().startswith("#") else line for line in lines)
 
 
 def _read_columns(path, text):
     points, header = [], True
     for number, line in enumerate(text.splitlines(), start=1):
-        if _is_comment(line):
+        if not line.strip():
             continue
         fields = re.split(r"\s*,\s*|\s+", line.strip())
         values = [_as_float(field) for field in fields]
@@ -1179,22 +1203,25 @@ def _read_columns(path, text):
 
 def _read_polygon(path, text):
     """The ring of a WKT polygon; its place in the file goes into the errors."""
-    kept = "\n".join("" if _is_comment(line) else line for line in text.splitlines())
-    number = 1 + len(kept) - len(kept.lstrip("\n"))
-    place = f"{path}, line {number}"
-    match = POLYGON.fullmatch(kept)
+    match = POLYGON.fullmatch(text)
     if match is None:
+        first = len(text) - len(text.lstrip())
         raise InputError(
-            f"{place}: found {_excerpt(kept.strip())}, expected POLYGON ((x y, x y, ...)), one "
-            f"polygon of one ring and nothing else; {_geometry_mend(kept)}"
+            f"{path}, line {_line_number(text, first)}: found {_excerpt(text)}, expected "
+            "POLYGON ((x y, x y, ...)), one polygon of one ring and nothing else; "
+            + _geometry_mend(text)
         )
     points, offset = [], match.start(1)
     for pair in match[1].split(","):
         first = offset + len(pair) - len(pair.lstrip())
-        place = f"{path}, line {1 + kept.count(chr(10), 0, first)}"
+        place = f"{path}, line {_line_number(text, first)}"
         points.append(_as_pair(place, pair, [_as_float(field) for field in pair.split()]))
         offset += len(pair) + 1
     return np.array(points)
+
+
+def _line_number(text, offset):
+    return 1 + text.count("\n", 0, offset)
 
 
 def _geometry_mend(text):
@@ -1212,7 +1239,7 @@ def _geometry_mend(text):
 
 def _as_float(text):
     try:
-        return float(text)
+        return None if "_" in text else float(text)
     except ValueError:
         return None
 
@@ -1221,12 +1248,12 @@ def _as_pair(place, text, values):
     if len(values) == 2 and all(v is not None and math.isfinite(v) for v in values):
         return values
     mend = {
-        1: "; give x and y",
+        1: ", with a comma or blanks between",
         3: "; leave out the third",
         4: "; write decimals with a point",
     }.get(len(values), "")
     raise InputError(
-        f"{place}: found {_excerpt(text.strip())}, expected two finite numbers, x and y{mend}"
+        f"{place}: found {_excerpt(text)}, expected two finite numbers, x and y{mend}"
     )
 
 
@@ -1239,7 +1266,6 @@ def _excerpt(text):
 
 
 def _wrapped(s):
-    s = np.asarray(s, float)
     return s - np.floor(s)
 
 
@@ -1352,10 +1378,7 @@ def _refuse_smooth_edge(result, argument):
 
 def _refuse_crossing(result, s):
     """Refuse an outline that crosses or touches itself, sampled at parameters s."""
-    z = result.position(s)
-    size = _size(z)
-    kept = np.abs(np.roll(z, -1) - z) > 1e-7 * size
-    s, z = s[kept], z[kept]
+    s, z, size = _close_samples(result, s)
     first, second = _meeting_chords(z, size)
     if not len(first):
         return
@@ -1376,17 +1399,35 @@ def _refuse_crossing(result, s):
         )
 
 
+def _close_samples(result, s):
+    """Samples that follow the curve through its sharp bends, and the size of the body."""
+    for _ in range(6):
+        z = result.position(s)
+        size = _size(z)
+        kept = np.abs(np.roll(z, -1) - z) > 1e-7 * size
+        s, z = s[kept], z[kept]
+        bent = np.abs(_turning(z)) > SUSPECT_TURN
+        bent |= np.roll(bent, -1)
+        if not bent.any():
+            break
+        middle = (s + 0.5 * ((np.roll(s, -1) - s) % 1.0)) % 1.0
+        s = np.sort(np.concatenate([s, middle[bent]]))
+    return s, result.position(s), size
+
+
 def _nearest_approach(result, s, width, other_s, other_width):
     """Parameters near two chords at which the curve meets itself, or comes nearest."""
     one, other = s + width / 2, other_s + other_width / 2
+    nearest = np.full((3, len(s)), np.inf)
     for _ in range(12):
         miss = result.position(one) - result.position(other)
+        nearest = np.where(np.abs(miss) < nearest[0], [np.abs(miss), one, other], nearest)
         a, b = result.derivative(one), -result.derivative(other)
         matrix = np.stack([np.stack([a.real, b.real], -1), np.stack([a.imag, b.imag], -1)], -2)
         step = np.linalg.pinv(matrix, rcond=1e-9) @ np.stack([miss.real, miss.imag], -1)[..., None]
         one = np.clip(one - step[:, 0, 0], s - width, s + 2 * width)
         other = np.clip(other - step[:, 1, 0], other_s - other_width, other_s + 2 * other_width)
-    return one, other
+    return nearest[1], nearest[2]
 
 
 def _meeting_chords(z, size):
@@ -1395,7 +1436,7 @@ def _meeting_chords(z, size):
     after = np.roll(z, -1)
     low = np.stack([np.minimum(z.real, after.real), np.minimum(z.imag, after.imag)])
     high = np.stack([np.maximum(z.real, after.real), np.maximum(z.imag, after.imag)])
-    first, second = _overlapping_boxes(low - 1e-12 * size, high + 1e-12 * size)
+    first, second = _overlapping_boxes(low - TOUCH * size, high + TOUCH * size)
     apart = (second - first > 1) & (second - first < count - 1)
     first, second = first[apart], second[apart]
     meet = _straddles(z, after, first, second, size) & _straddles(z, after, second, first, size)
@@ -1403,11 +1444,11 @@ def _meeting_chords(z, size):
 
 
 def _straddles(z, after, line, chord, size):
-    """Whether the ends of a chord lie on the two sides of another's line, or on it."""
+    """Whether the ends of a chord lie on the two sides of another's line, or all but on it."""
     along = np.conj(after[line] - z[line])
     one = (along * (z[chord] - z[line])).imag
     other = (along * (after[chord] - z[line])).imag
-    nought = 1e-12 * size * np.abs(along)
+    nought = TOUCH * size * np.abs(along)
     return ((one <= nought) | (other <= nought)) & ((one >= -nought) | (other >= -nought))
 
 

@@ -2,10 +2,11 @@
 
 The length of panels follows a field along the wall: the least of what curvature, a sharp edge, a
 jump of curvature and the nearest other wall ask for, made to change slowly, so that neighbours
-differ by less than a factor of about two. Panels share the integral of 1/length equally.
+differ by less than a factor of about e. Panels share the integral of 1/length equally.
 """
 
 from dataclasses import dataclass, field
+from functools import cache
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -13,6 +14,8 @@ from scipy.spatial import cKDTree
 
 from offbody.arcs import Arcs
 from offbody.errors import InputError
+from offbody.images import Copies
+from offbody.surroundings import copies_of
 
 GROWTH = 1.0              # greatest slope of the length field: neighbours within a factor of e
 PER_CURVATURE = 0.5       # panel length over the least radius of curvature on it
@@ -28,7 +31,7 @@ REACH = {1: 3.0, 2: 10.0, 3: 10.0, 4: 9.0, 5: 7.0, 6: 6.0, 7: 5.0, 8: 4.5}
 REACH_OF_HIGH_ORDERS = 3.0
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Panels:
     """All panels of a model, body after body, as the arrays that the kernels take."""
 
@@ -48,6 +51,7 @@ class Panels:
     slack: np.ndarray           # (P,)
     size: float
     edged: np.ndarray           # (bodies,) bool: the body's first panel starts at a sharp edge
+    copies: Copies | None       # where the surroundings repeat them
     geometry: tuple = field(repr=False, default=())
 
     @property
@@ -87,34 +91,21 @@ def lay(outlines, surroundings, counts, order):
     for wall, gap, count in zip(walls, gaps, counts, strict=True):
         lengths = _length_field(wall, gap)
         bodies.append(_ends(wall, lengths, count))
-    return _assemble(walls, bodies, order), walls
+    return _assemble(walls, bodies, order, surroundings), walls
 
 
 def _gaps(walls, surroundings):
-    """Per body, each sample's gap scale to the nearest other wall; overlaps are refused.
+    """Per body, each sample's gap scale to the nearest other wall or image; overlaps are refused.
 
     Stretches longer than their distance to it are halved until the samples see the gap as it is.
     """
     sizes = [np.ptp(w.sample_points.real) + np.ptp(w.sample_points.imag) for w in walls]
     for body, wall in enumerate(walls):
-        _refuse_ground(wall, body, surroundings, sizes[body])
-    if len(walls) == 1:
-        return [_ground_gap(walls[0], surroundings)]
+        _refuse_beyond_walls(wall, body, surroundings, sizes[body])
+    if len(walls) == 1 and not copies_of(surroundings, walls[0].sample_points[:1]):
+        return [np.full(len(walls[0].sample_points), np.inf)]
     for _ in range(40):
-        found = []
-        for body, wall in enumerate(walls):
-            others = [(k, w) for k, w in enumerate(walls) if k != body]
-            cloud = np.concatenate([w.sample_points for _, w in others])
-            owner = np.concatenate([np.full(len(w.sample_points), k) for k, w in others])
-            distance, which = cKDTree(np.stack([cloud.real, cloud.imag], 1)).query(
-                np.stack([wall.sample_points.real, wall.sample_points.imag], 1)
-            )
-            nearest = int(np.argmin(distance))
-            other = int(owner[which[nearest]])
-            if distance[nearest] < TOUCH * min(sizes[body], sizes[other]):
-                _refuse_overlap(walls, body, other, wall.sample_points[nearest])
-            curvature = np.concatenate([np.abs(w.sample_curvature) for _, w in others])[which]
-            found.append((distance, np.abs(wall.sample_curvature) + curvature))
+        found = [_nearest(walls, body, surroundings, sizes) for body in range(len(walls))]
         coarse = [d < w.sample_stretch for (d, _), w in zip(found, walls, strict=True)]
         if not any(c.any() for c in coarse):
             break
@@ -125,18 +116,27 @@ def _gaps(walls, surroundings):
         for other, around in enumerate(walls):
             if other != body and _holds(around, wall.sample_points[:1]).any():
                 _refuse_overlap(walls, body, other, wall.sample_points[0])
-    return [
-        np.minimum(_gap_scale(*facing), _ground_gap(w, surroundings))
-        for facing, w in zip(found, walls, strict=True)
-    ]
+    return [_gap_scale(*facing) for facing in found]
 
 
-def _ground_gap(wall, surroundings):
-    """The gap scale between each sample and its own mirror image, or infinity."""
-    image = surroundings.mirrored(wall.sample_points)
-    if image is None:
-        return np.full(len(wall.sample_points), np.inf)
-    return _gap_scale(np.abs(wall.sample_points - image), 2.0 * np.abs(wall.sample_curvature))
+def _nearest(walls, body, surroundings, sizes):
+    """Distance from each sample of a body to the nearest other wall, and both curvatures in sum."""
+    cloud, owner, bending = [], [], []
+    for k, wall in enumerate(walls):
+        seen = copies_of(surroundings, wall.sample_points)
+        for points in seen if k == body else [wall.sample_points, *seen]:
+            cloud.append(points)
+            owner.append(np.full(len(points), k))
+            bending.append(np.abs(wall.sample_curvature))
+    here = walls[body].sample_points
+    cloud = np.concatenate(cloud)
+    tree = cKDTree(np.stack([cloud.real, cloud.imag], 1))
+    distance, which = tree.query(np.stack([here.real, here.imag], 1))
+    nearest = int(np.argmin(distance))
+    other = int(np.concatenate(owner)[which[nearest]])
+    if distance[nearest] < TOUCH * min(sizes[body], sizes[other]):
+        _refuse_overlap(walls, body, other, here[nearest])
+    return distance, np.abs(walls[body].sample_curvature) + np.concatenate(bending)[which]
 
 
 def _gap_scale(distance, curvature):
@@ -149,23 +149,30 @@ def _gap_scale(distance, curvature):
         return np.sqrt(distance * (distance + 1.0 / curvature))
 
 
-def _refuse_ground(wall, body, surroundings, size):
-    image = surroundings.mirrored(wall.sample_points)
-    if image is None:
-        return
-    height = np.min((wall.sample_points - image).imag) / 2
-    if height < TOUCH * size:
-        raise InputError(
-            f"body {body} ({wall.outline.name}) reaches {-height:.3g} below the ground "
-            f"y = {surroundings.y:g}; move it up, or lower the ground"
-        )
+def _refuse_beyond_walls(wall, body, surroundings, size):
+    for k, height in enumerate(surroundings.walls):
+        sign = 1.0 if k == 0 else -1.0
+        clear = np.min(sign * (wall.sample_points.imag - height))
+        if clear < TOUCH * size:
+            side, way = (("below", "up") if k == 0 else ("above", "down"))
+            raise InputError(
+                f"body {body} ({wall.outline.name}) touches the wall y = {height:g} or reaches "
+                f"{max(0.0, -clear):.3g} {side} it; move it {way}"
+            )
 
 
 def _refuse_overlap(walls, body, other, place):
+    where = f"near ({place.real:.6g}, {place.imag:.6g})"
+    if body == other:
+        raise InputError(
+            f"body {body} ({walls[body].outline.name}) overlaps or touches its own copy {where}; "
+            "make the pitch larger"
+        )
+    first, second = sorted((body, other))
     raise InputError(
-        f"bodies {min(body, other)} ({walls[min(body, other)].outline.name}) and "
-        f"{max(body, other)} ({walls[max(body, other)].outline.name}) overlap or touch near "
-        f"({place.real:.6g}, {place.imag:.6g}); move them apart or join them to one outline"
+        f"bodies {first} ({walls[first].outline.name}) and {second} "
+        f"({walls[second].outline.name}) overlap or touch {where}; move them apart or join them "
+        "to one outline"
     )
 
 
@@ -243,9 +250,9 @@ def _apportion(needs, count, name):
     return numbers
 
 
-def _assemble(walls, bodies, order):
+def _assemble(walls, bodies, order, surroundings):
     """Nodes, tangents, weights and local shapes of the panels between the given arc positions."""
-    x, gauss = legendre.leggauss(order)
+    x, shares = gauss(order)
     starts = np.concatenate([[0], np.cumsum([len(ends) - 1 for ends in bodies])])
     parts = []
     for wall, ends in zip(walls, bodies, strict=True):
@@ -257,7 +264,7 @@ def _assemble(walls, bodies, order):
         nodes = wall.outline.position(parameter)
         tangents = wall.outline.derivative(parameter)
         tangents /= np.abs(tangents)
-        weights = (half[:, None] * gauss).ravel()
+        weights = (half[:, None] * shares).ravel()
         a, b = corners[:-1], corners[1:]
         if order == 1:  # straight: the body is the polygon of its panel ends
             nodes, weights = 0.5 * (a + b), np.abs(b - a)
@@ -278,15 +285,27 @@ def _assemble(walls, bodies, order):
     return Panels(
         order, starts, np.stack([a, b], 1), normals, nodes, tangents, weights, arcs, end_arcs,
         modes, place_modes, np.ascontiguousarray(place_tangents), bulge, slack, size,
-        np.array([wall.edge is not None for wall in walls]), geometry,
+        np.array([wall.edge is not None for wall in walls]),
+        Copies.of(nodes, surroundings.period), geometry,
     )
 
 
+@cache
+def gauss(order):
+    """Gauss-Legendre points and weights on [-1, 1]."""
+    return legendre.leggauss(order)
+
+
+@cache
+def to_modes(order):
+    """(order, order): values at the Gauss points of a panel to Legendre coefficients."""
+    return np.linalg.inv(legendre.legvander(gauss(order)[0], order - 1))
+
+
+@cache
 def to_ends(order):
     """(2, order): values at the Gauss points of a panel to those at its two ends."""
-    x, _ = legendre.leggauss(order)
-    at_ends = legendre.legvander(np.array([-1.0, 1.0]), order - 1)
-    return at_ends @ np.linalg.inv(legendre.legvander(x, order - 1))
+    return legendre.legvander(np.array([-1.0, 1.0]), order - 1) @ to_modes(order)
 
 
 def _keep_apart_at_edges(at_ends, walls, starts, tangents):

@@ -9,6 +9,7 @@ import re
 import secrets
 import shutil
 import textwrap
+from importlib import resources
 from pathlib import Path
 
 import numpy as np
@@ -26,8 +27,9 @@ MOST_SECTORS = 8  # of one kind that the page lists; the table has them all
 
 # What a folder may hold and still be replaced: no file that somebody else put there.
 OWN_FILES = re.compile(
-    r"summary\.txt|survey\.(csv|json)|field\.npz|case\.toml|(map|field|sensors)(-[-.\w]+)?\.png"
+    r"summary\.txt|survey\.(csv|json)|field\.npz|(map|field|sensors)(-[-.\w]+)?\.png"
 )
+BUILT_IN_CASE = resources.files("offbody") / "demo.toml"
 
 CAUTIONS = (
     "The flow is taken as two-dimensional, steady, of low speed and without turbulence or shear: "
@@ -62,6 +64,15 @@ def whole_folder(path, overwrite=False):
     ------
     ob.InputError
         If something stands at ``path`` and may not be replaced, or its parent is missing.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> with tempfile.TemporaryDirectory() as parent:
+    ...     with whole_folder(Path(parent, "results")) as folder:
+    ...         _ = (folder / "summary.txt").write_text("all is well")
+    ...     [entry.name for entry in Path(parent).iterdir()]
+    ['results']
     """
     path = Path(os.path.abspath(path))
     _refuse_standing(path, overwrite)
@@ -95,11 +106,18 @@ def _refuse_standing(path, overwrite):
     if not overwrite:
         raise InputError(f"--out {path}: exists already; give another name, or --overwrite")
     for entry in sorted(path.iterdir()):
-        if not OWN_FILES.fullmatch(entry.name):
+        if not _is_own(entry):
             raise InputError(
                 f"--out {path}: holds {entry.name!r}, which is not offbody's to replace; "
                 "move it, or give another name"
             )
+
+
+def _is_own(entry):
+    """Whether a file is offbody's to replace: a result, or its built-in case, not edited since."""
+    if entry.name == "case.toml":
+        return entry.read_bytes() == BUILT_IN_CASE.read_bytes()
+    return OWN_FILES.fullmatch(entry.name) is not None
 
 
 def write_csv(path, case, table):
@@ -209,7 +227,10 @@ def summary(case, table, cautions=()):
     str
     """
     lines = [case.title, "=" * len(case.title), *_opening(case, table), "", "BODIES"]
-    lines += [f"  {_body_line(body)}" for body in case.bodies]
+    for body in case.bodies:
+        lines += textwrap.wrap(
+            _body_line(body), PAGE_WIDTH, initial_indent="  ", subsequent_indent="      "
+        )
     lines += ["", "SENSORS (speeds and directions sensed, against the undisturbed stream)"]
     for place in range(len(table.sensors)):
         lines += _sensor_lines(case, table, place)
@@ -234,7 +255,8 @@ def _extent(angles):
     """A set of angles in few words."""
     steps = np.diff(angles) % 360.0
     if len(angles) > 2 and np.allclose(steps, steps[0]):
-        return f"{angles[0]:g} to {angles[-1]:g} in steps of {steps[0]:g} degrees"
+        unit = "degree" if steps[0] == 1 else "degrees"
+        return f"{angles[0]:g} to {angles[-1]:g} in steps of {steps[0]:g} {unit}"
     return ", ".join(f"{angle:g}" for angle in angles[:12]) + (" ..." if len(angles) > 12 else "")
 
 
@@ -271,8 +293,11 @@ def _findings(case, table, place):
         yield f"worst {word}", _worst(table, departure, trust, lambda e: _percent(case, e))
     component = table.component_error[:, place]
     if np.isfinite(component).any():
-        yield "its worst error", _worst(
-            table, component, trust, lambda e: f"{_percent(case, e)} of the undisturbed speed"
+        square = np.isnan(table.speed_ratio[:, place])
+        if square.any():
+            yield "square to the path", f"{_sectors(table, square)}: no ratio there"
+        yield "worst component error", _worst(
+            table, component, trust, lambda e: f"{100 * e:+.2f} percent of the undisturbed speed"
         )
     turning = table.direction_error[:, place]
     if np.isfinite(turning).any():
@@ -311,7 +336,8 @@ def _worst(table, errors, trust, worded):
     usable = np.flatnonzero(trust & np.isfinite(errors))
     if not usable.size:
         return "not known: no angle is trusted"
-    row = usable[np.abs(errors[usable]).argmax()]
+    # Mirror images are equal but for rounding: the first of them stands for both.
+    row = usable[np.abs(errors[usable]).round(9).argmax()]
     kind = "bearing" if table.by_bearing else "direction"
     return f"{worded(errors[row])} at {kind} {table.angles[row]:g}"
 

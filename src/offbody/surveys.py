@@ -11,7 +11,7 @@ from offbody.bearings import from_bearing, to_bearing, within_turn
 from offbody.checks import as_body, as_directions, as_number
 from offbody.errors import InputError
 from offbody.sensors import SENSORS, PointSensor
-from offbody.surroundings import OpenStream
+from offbody.surroundings import holds, usual_directions
 
 # Rules of this project, not of the trade: first and cautious guesses.
 LEE_HALF_ANGLE = 10.0  # degrees by which the lee of a bluff body widens on either side
@@ -64,7 +64,7 @@ def survey(model, sensors, directions=None, *, bearings=None):
     angles, by_bearing = _as_angles(model, directions, bearings)
     samples = _Samples.of(model, sensors)
     table = Survey(model, sensors, _names(sensors), angles, by_bearing, samples)
-    _check_above_ground(table)
+    _check_between_walls(table)
     _check_clear_of_bodies(table)
     return table
 
@@ -533,8 +533,7 @@ def _as_angles(model, directions, bearings):
             "or bearings (where the wind comes from), not both"
         )
     if directions is None and bearings is None:
-        open_stream = isinstance(model.surroundings, OpenStream)
-        return np.arange(360.0) if open_stream else np.array([0.0, 180.0]), False
+        return usual_directions(model.surroundings), False
     name, given = ("directions", directions) if bearings is None else ("bearings", bearings)
     angles = np.atleast_1d(as_directions(name, given))
     if angles.size == 0:
@@ -552,18 +551,14 @@ def _port_place(model, port):
     return place.real, place.imag
 
 
-def _check_above_ground(table):
-    """Refuse a sensor that reaches below the ground, where the flow is but the mirror image."""
-    samples = table._samples
-    places = _as_complex(samples.points)
-    images = table.model.surroundings.mirrored(places)
-    if images is None:
-        return
-    for sample in np.flatnonzero((places - images).imag < 0):
+def _check_between_walls(table):
+    """Refuse a sensor that reaches beyond a plane wall, where there is no flow."""
+    samples, surroundings = table._samples, table.model.surroundings
+    for sample in np.flatnonzero(~holds(surroundings, _as_complex(samples.points))):
         place = samples.owner[sample]
         raise InputError(
-            f"sensors[{place}] ({table.names[place]}, {table.sensors[place]!r}) reaches below "
-            f"the ground {table.model.surroundings!r}: move it above"
+            f"sensors[{place}] ({table.names[place]}, {table.sensors[place]!r}) reaches beyond "
+            f"the wall of {surroundings!r}: move it into the flow"
         )
 
 

@@ -41,12 +41,12 @@ def test_a_wake_slows_the_stream_far_ahead_as_its_source_does(drag_coefficient, 
 
 
 def blown_tube(drag_coefficient, direction):
-    """The exact field of the normal speed prescribed: cos^4 of the angle over the lee half."""
+    """The exact field of the normal speed prescribed: cos^6 of the angle over the lee half."""
     flux = drag_coefficient * DIAMETER / 2
 
     def normal_speed(angle):
         lee = np.maximum(np.cos(angle - np.radians(direction)), 0.0)
-        return flux * lee**4 / (0.375 * np.pi * DIAMETER / 2)  # 3/8: the mean of cos^4
+        return flux * lee**6 / (0.3125 * np.pi * DIAMETER / 2)  # 5/16: the mean of cos^6
 
     return exact.BlownCircle(normal_speed, DIAMETER / 2, terms=2048)
 
