@@ -15,10 +15,12 @@ stream   stream function constant on each wall, vortices as unknown: an equation
 Errors are the largest, over the onset speed. "Near", "beside" and "far" are 1e-6 (with a sharp edge
 0.002), 0.05 and 2 off the wall, in radii, half-lengths of an ellipse, or chords. The surface speed
 is compared at the nodes, but for the last 1e-4 of the chord at a sharp edge. Times are medians of
-assembly and solution on panels already laid, the formulations taken in turns.
+the processor's time, on one thread, for assembly and solution on panels already laid, the
+formulations taken in turns: so that others at work on the machine change them little.
 """
 
 import argparse
+import os
 import sys
 import time
 from collections.abc import Callable
@@ -27,11 +29,15 @@ from pathlib import Path
 from statistics import median
 from unittest.mock import patch
 
+os.environ["OMP_NUM_THREADS"] = "1"  # read by the libraries when they are loaded
+
 import numpy as np
 from scipy.linalg import lu_factor, lu_solve
 
 import offbody as ob
-from offbody import flow, panels
+from offbody import _kernels, flow, panels
+from offbody.equation import Equation
+from offbody.laying import lay, measure
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[1] / "tests"))
 import exact
@@ -89,88 +95,94 @@ def all_cases():
     }
 
 
-def solved(case, order, scale=1.0):
-    """The model of a case, with a multiple of the panels that the library would lay."""
-    model = ob.solve(case.outlines, order=order)
-    if scale == 1.0:
-        return model
-    counts = [max(2, round(count * scale)) for count in model.panel_counts]
-    return ob.solve(case.outlines, order=order, panels=counts)
+class Laid:
+    """The panels of a case: a multiple of those that the library would lay."""
+
+    def __init__(self, case, order, scale=1.0):
+        self.walls, lengths = measure(case.outlines, OPEN)
+        ends = lay(self.walls, lengths, [None] * len(self.walls), 1.0 / scale)
+        self.panels = panels.assemble(self.walls, ends, order, OPEN)
+        self.root = np.sqrt(self.panels.weights)
+        self.nodes = len(self.root)
+        self.onset = self.panels.tangents * case.onset  # tangential - i normal
+        counts = np.diff(self.panels.starts) * order
+        self.bodies = np.repeat(np.eye(len(counts)), counts, axis=0)  # 1 on a body's own nodes
 
 
 # --- the formulations: LU factors, strengths gamma + i v, surface speed ------------------------
 
 
-def vortex(model, case):
-    model._factorise()
-    bodies = range(len(case.outlines))
-    speed = np.concatenate([model.surface(body, case.direction).speed for body in bodies])
-    return model._factors, speed, speed
-
-
-def source(model, case):
-    laid, bodies, root = model._panels, uniform(model), np.sqrt(model._panels.weights)
-    # Turned by a right angle, the normal velocity of a source is the tangential one of a vortex.
-    tangential, source_tangential = flow.wall_influence(laid, OPEN)
-    around, onset, count = tangential @ bodies, laid.tangents * case.onset, len(root)
-    matrix = np.eye(count + laid.bodies)  # no net circulation, but where a Kutta row says so
-    matrix[:count, :count] = tangential * (root[:, None] / root)
-    matrix[:count, count:] = -(source_tangential @ bodies) * root[:, None]
-    right = np.concatenate([-onset.imag * root, np.zeros(laid.bodies)])
+def vortex(laid, case):
+    equation = Equation(laid.panels, OPEN)
     if case.edge:
-        sides = [0, -1]
-        matrix[count, :count] = source_tangential[sides].sum(axis=0) / root
-        matrix[count, count] = around[sides].sum()
-        right[count] = -onset.real[sides].sum()
+        onset = np.stack([laid.onset.real, np.zeros(laid.nodes)])
+        still, spin = equation.vortices(onset, np.array([[0.0], [1.0]]))
+        speed = still - spin * (still[0] + still[-1]) / (spin[0] + spin[-1])
+    else:
+        speed = equation.vortices(laid.onset.real[None])[0]
+    return equation._factors, speed, speed
+
+
+def source(laid, case):
+    count, total = laid.nodes, sum(laid.bodies.shape)
+    tangential, normal = np.empty((2, count, count))
+    root, part, along = laid.root, laid.panels, laid.panels.tangents
+    _kernels.influence(part.geometry, part.modes, along.reshape(-1, part.order), part.nodes, along,
+                       tangential, normal)
+    # Turned by a right angle: a source's normal velocity is the tangential one of a vortex, its
+    # tangential velocity the normal one reversed.
+    around, through = tangential @ laid.bodies, normal @ laid.bodies
+    matrix = np.eye(total)  # no net circulation, but where a Kutta row says so
+    matrix[:count, :count] = tangential * (root[:, None] / root)
+    matrix[:count, count:] = through * root[:, None]
+    right = np.concatenate([-laid.onset.imag * root, np.zeros(total - count)])
+    if case.edge:
+        matrix[count, :count] = -normal[[0, -1]].sum(axis=0) / root
+        matrix[count, count] = around[[0, -1]].sum()
+        right[count] = -laid.onset.real[[0, -1]].sum()
     factors = lu_factor(matrix, overwrite_a=True, check_finite=False)
     unknown = lu_solve(factors, right, check_finite=False)
     out, turning = unknown[:count] / root, unknown[count:]
-    speed = onset.real + source_tangential @ out + around @ turning
-    return factors, bodies @ turning + 1j * out, speed
+    speed = laid.onset.real - normal @ out + around @ turning
+    return factors, laid.bodies @ turning + 1j * out, speed
 
 
-def stream(model, case):
-    laid, bodies, root = model._panels, uniform(model), np.sqrt(model._panels.weights)
-    count = len(root)
-    cuts = np.tile(laid.starts[:-1], (count, 1))
-    unit = flow.potential(laid, OPEN, np.eye(count), cuts, np.zeros(count), laid.nodes).imag.T
-    matrix = np.zeros((count + laid.bodies,) * 2)
+def stream(laid, case):
+    count, total, root = laid.nodes, sum(laid.bodies.shape), laid.root
+    cuts = np.tile(laid.panels.starts[:-1], (count, 1))
+    z = laid.panels.nodes
+    unit = flow.potential(laid.panels, OPEN, np.eye(count), cuts, np.zeros(count), z).imag.T
+    matrix = np.zeros((total, total))
     matrix[:count, :count] = unit * (root[:, None] / root)
-    matrix[:count, count:] = -bodies * root[:, None]
-    matrix[count:, :count] = bodies.T * root
+    matrix[:count, count:] = -laid.bodies * root[:, None]
+    matrix[count:, :count] = laid.bodies.T * root
     if case.edge:
         matrix[count, :count] = 0.0
         matrix[count, [0, count - 1]] = 1.0 / root[[0, -1]]
-    right = np.concatenate([-(laid.nodes * case.onset).imag * root, np.zeros(laid.bodies)])
-    factors = lu_factor(matrix, check_finite=False)
+    right = np.concatenate([-(z * case.onset).imag * root, np.zeros(total - count)])
+    factors = lu_factor(matrix, overwrite_a=True, check_finite=False)
     speed = lu_solve(factors, right, check_finite=False)[:count] / root
     return factors, speed, speed
-
-
-def uniform(model):
-    """(N, bodies): one on a body's own nodes, zero on the others'."""
-    laid = model._panels
-    return np.repeat(np.eye(laid.bodies), np.diff(laid.starts) * laid.order, axis=0)
 
 
 # --- measures ---------------------------------------------------------------------------------
 
 
-def surface_error(model, case, speed):
+def surface_error(laid, case, speed):
     worst = []
-    for body, wall in enumerate(model._arcs):
-        part = model._panels.node_slice(body)
-        s = wall.parameter(model._panels.arcs[part])
+    for body, wall in enumerate(laid.walls):
+        part = laid.panels.node_slice(body)
+        s = wall.parameter(laid.panels.arcs[part])
         miss = np.abs(speed[part] - case.speed(body, s))
         worst.append(miss[np.abs(case.walls[body].wall(s)) > 1e-4 if case.edge else ...].max())
     return max(worst)
 
 
-def off_body_error(model, case, strengths, distance):
+def off_body_error(laid, case, strengths, distance):
     z = np.concatenate([wall.offset_points(SIDES, distance) for wall in case.walls])
     if len(case.walls) > 1:
         z = z[np.all([np.abs(z - w.centre) > w.radius for w in case.walls], axis=0)]
-    found = flow.velocity(model._panels, OPEN, strengths[None], z)[0] + case.onset
+    found = flow.velocity(laid.panels, OPEN, strengths[None], z)[0] + case.onset
     return np.abs(found - case.velocity(z)).max()
 
 
@@ -180,13 +192,13 @@ def condition(factors):
 
 
 def times(calls, repeats):
-    """Median ms of each call, taken in turns so that a busy machine hurts all alike."""
+    """Median ms of processor time of each call, taken in turns."""
     taken = [[] for _ in calls]
     for _ in range(repeats):
         for call, record in zip(calls, taken, strict=True):
-            start = time.perf_counter()
+            start = time.process_time()
             call()
-            record.append(1e3 * (time.perf_counter() - start))
+            record.append(1e3 * (time.process_time() - start))
     return [median(record) for record in taken]
 
 
@@ -201,18 +213,17 @@ def print_table(title, heads, rows):
 def print_errors(cases, orders, repeats):
     rows = []
     for case, order in ((case, order) for case in cases for order in orders):
-        model, columns = solved(case, order), []
-        part = model._panels.node_slice(0)
+        laid, columns = Laid(case, order), []
         for formulation in (vortex, source, stream):
-            factors, strengths, speed = formulation(model, case)
-            around = strengths.real[part] @ model._panels.weights[part]
+            factors, strengths, speed = formulation(laid, case)
+            around = laid.panels.weights * strengths.real @ laid.bodies
             distances = (0.002 if case.edge else 1e-6, 0.05, 2.0)
-            columns.append([surface_error(model, case, speed),
-                            *(off_body_error(model, case, strengths, d) for d in distances),
-                            abs(around - case.circulation), condition(factors)])
+            columns.append([surface_error(laid, case, speed),
+                            *(off_body_error(laid, case, strengths, d) for d in distances),
+                            np.abs(around - case.circulation).max(), condition(factors)])
         cells = [" / ".join(f"{x:.0e}" for x in row) for row in zip(*columns, strict=True)]
-        taken = times([lambda f=f, m=model, c=case: f(m, c) for f in (vortex, source)], repeats)
-        rows.append([case.name, str(order), str(model.node_count), *cells,
+        taken = times([lambda f=f, m=laid, c=case: f(m, c) for f in (vortex, source)], repeats)
+        rows.append([case.name, str(order), str(laid.nodes), *cells,
                      " / ".join(f"{t:.1f}" for t in taken)])
     print_table("Errors on the panels laid by default: vortex / source / stream",
                 ["body", "order", "nodes", "surface", "near", "beside", "far", "circulation",
@@ -220,19 +231,16 @@ def print_errors(cases, orders, repeats):
 
 
 def first_to_reach(case, order, most):
-    """{(formulation, target): the first model, of ever more panels, within the target}."""
-    found, scale = {}, 0.15
-    while len(found) < 2 * len(TARGETS):
-        model = solved(case, order, scale)
-        if model.node_count > most:
-            break
+    """{(formulation, target): the first panels, of ever more, that bring it within the target}."""
+    found, scale = {}, 0.3
+    while len(found) < 2 * len(TARGETS) and (laid := Laid(case, order, scale)).nodes <= most:
         for formulation in (vortex, source):
-            _, strengths, speed = formulation(model, case)
-            error = max(surface_error(model, case, speed),
-                        off_body_error(model, case, strengths, 0.05))
+            _, strengths, speed = formulation(laid, case)
+            error = max(surface_error(laid, case, speed),
+                        off_body_error(laid, case, strengths, 0.05))
             for target in TARGETS:
                 if error <= target:
-                    found.setdefault((formulation, target), model)
+                    found.setdefault((formulation, target), laid)
         scale *= 2**0.25
     return found
 
@@ -244,24 +252,24 @@ def print_soonest(cases, orders, most, repeats):
         calls = [lambda f=f, m=m, c=case: f(m, c) for (f, _), m in found.items()]
         for (formulation, target), ms in zip(found, times(calls, repeats), strict=True):
             key = case.name, target, formulation, order
-            nodes[key], taken[key] = found[formulation, target].node_count, ms
+            nodes[key], taken[key] = found[formulation, target].nodes, ms
+
+    def cell(*key):
+        return f"{nodes[key]}, {taken[key]:.1f}" if key in nodes else "-"
 
     def ratio(target, formulation, order):
         """Time over the soonest vortex order's, geometric mean over the bodies that it reaches."""
-        logs = [np.log(taken[name, target, formulation, order]
-                       / min(taken.get((name, target, vortex, q), np.inf) for q in orders))
-                for name in (case.name for case in cases)
-                if (name, target, formulation, order) in taken]
+        logs = [np.log(taken[c.name, target, formulation, order]
+                       / min(taken.get((c.name, target, vortex, q), np.inf) for q in orders))
+                for c in cases if (c.name, target, formulation, order) in taken]
         return f"{np.exp(np.mean(logs)):.1f}, {len(logs)} of {len(cases)}" if logs else "-"
 
     heads = ["error", "formulation", *(f"order {q}" for q in orders)]
     kinds = [(target, formulation) for target in TARGETS for formulation in (vortex, source)]
-    rows = [[name, f"{t:.0e}", f.__name__,
-             *(f"{nodes[name, t, f, q]}, {taken[name, t, f, q]:.1f}"
-               if (name, t, f, q) in nodes else "-" for q in orders)]
-            for name in (case.name for case in cases) for t, f in kinds]
     print_table(f"Nodes, and ms, to an error on the wall and beside it ({most} nodes at most)",
-                ["body", *heads], rows)
+                ["body", *heads],
+                [[c.name, f"{t:.0e}", f.__name__, *(cell(c.name, t, f, q) for q in orders)]
+                 for c in cases for t, f in kinds])
     print_table("Time over that of the soonest vortex order (geometric mean), bodies reached",
                 heads, [[f"{t:.0e}", f.__name__, *(ratio(t, f, q) for q in orders)]
                         for t, f in kinds])
@@ -273,14 +281,14 @@ def print_reach(case, scale, repeats):
     for order in REACH_ORDERS:
         errors, calls = [], []
         for reach in REACHES:
-            with patch.dict(panels.REACH, {order: reach}):
-                model = solved(case, order, scale)
-            _, strengths, _ = vortex(model, case)
-            errors.append(off_body_error(model, case, strengths, 0.05))
-            calls.append(lambda laid=model._panels: flow.wall_influence(laid, OPEN))
-        in_use = panels.REACH.get(order, panels.REACH_OF_HIGH_ORDERS)
+            with patch.object(panels, "reach", lambda _, tried=reach: tried):
+                laid = Laid(case, order, scale)
+            _, strengths, _ = vortex(laid, case)
+            errors.append(off_body_error(laid, case, strengths, 0.05))
+            calls.append(lambda part=laid.panels: flow.wall_influence(part, OPEN))
+        in_use = panels.reach(order)
         pairs = zip(errors, times(calls, repeats), strict=True)
-        rows.append([str(order), f"{in_use:g}", *(f"{e:.0e}, {ms:.1f}" for e, ms in pairs)])
+        rows.append([str(order), f"{in_use:.2g}", *(f"{e:.0e}, {ms:.1f}" for e, ms in pairs)])
     print_table(f"Error beside the wall, and ms of assembly, by reach in half-chords: {case.name}, "
                 f"{scale:g} times the default panels",
                 ["order", "in use", *(f"{r:g}" for r in REACHES)], rows)

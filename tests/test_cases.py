@@ -77,7 +77,7 @@ def test_bearings_are_all_a_step_a_list_or_a_range(case_of, said, meant):
     np.testing.assert_allclose(case.angles, meant, rtol=0, atol=1e-12)
 
 
-@pytest.mark.parametrize(("word", "along"), [("directions", [0, 180]), ("bearings", [270, 90])])
+@pytest.mark.parametrize(("word", "along"), [("directions", [0, 180]), ("bearings", [90, 270])])
 def test_all_over_a_ground_is_both_ways_along_it(tmp_path, word, along):
     text = f"""
     length_unit = "m"
@@ -87,8 +87,23 @@ def test_all_over_a_ground_is_both_ways_along_it(tmp_path, word, along):
     """
     case = read_case(written(tmp_path, text))
     np.testing.assert_array_equal(case.angles, along)
-    np.testing.assert_array_equal(case.directions(case.angles), [0, 180])
+    np.testing.assert_array_equal(np.sort(case.directions(case.angles)), [0, 180])
     assert case.surroundings == ob.Ground(-1.0)
+
+
+@pytest.mark.parametrize(
+    ("said", "meant"),
+    [
+        ('kind = "open"', ob.OpenStream()),
+        ('kind = "ground"', ob.Ground(0.0)),
+        ('kind = "duct"\nlower = -3\nupper = 5', ob.Duct(-3.0, 5.0)),
+        ('kind = "row"\npitch = 4', ob.Row(4.0)),
+    ],
+)
+def test_every_kind_of_surroundings_can_be_said(case_of, said, meant):
+    case = case_of(("bearings = 10\nprevailing_bearing = 240", 'bearings = "all"'),
+                   ("[[body]]", f"[surroundings]\n{said}\n[[body]]"))
+    assert case.surroundings == meant
 
 
 def test_a_case_said_by_directions_is_the_same_survey_as_one_said_by_bearings(tmp_path, case_of):

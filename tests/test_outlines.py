@@ -12,6 +12,11 @@ SQUARE = [(0.0, 0.0), (1.0, 0.0), (1.0, 1.0), (0.0, 1.0)]
 L_SHAPE = [(0, 0), (2, 0), (2, 0.6), (0.6, 0.6), (0.6, 2), (0, 2)]
 
 
+def assert_near(actual, expected, atol=0.0, rtol=0.0):
+    """Like NumPy's, with no tolerance that is not asked for."""
+    np.testing.assert_allclose(actual, expected, rtol=rtol, atol=atol)
+
+
 def pairs(z):
     return np.stack([np.real(z), np.imag(z)], axis=-1)
 
@@ -142,9 +147,9 @@ def test_parameter_is_periodic_and_tiny_negative_parameters_are_just_before_its_
     outline = OUTLINES[name]
     s = np.random.default_rng(1).random(100)
     # Adding 3 rounds s to 4e-16, and speeds are below 100.
-    np.testing.assert_allclose(outline.position(s + 3), outline.position(s), atol=1e-13)
+    assert_near(outline.position(s + 3), outline.position(s), atol=1e-13)
     ends = outline.position(np.array([0.0, 1.0, -1e-300, -1e-17]))
-    np.testing.assert_allclose(ends, ends[0], atol=1e-14)  # rounding of coordinates below 4
+    assert_near(ends, ends[0], atol=1e-14)  # rounding of coordinates below 4
 
 
 @EACH
@@ -160,7 +165,7 @@ def test_derivative_is_the_limit_of_differences(name):
     )
     derivative = outline.derivative(s)
     # Fourth-order differences: step^4 times the fifth derivative, and rounding over the step.
-    np.testing.assert_allclose(differences, derivative, atol=2e-8 * np.abs(derivative).max())
+    assert_near(differences, derivative, atol=2e-8 * np.abs(derivative).max())
 
 
 @EACH
@@ -232,8 +237,8 @@ def test_moves_turns_and_scalings_compose_as_complex_arithmetic_says():
     moved = base.moved(2.0, -1.0).turned(30.0, about=(1.0, 1.0)).scaled(2.5, about=(0.0, 3.0))
     turn = np.exp(1j * np.pi / 6)
     expected = ((z + 2 - 1j - (1 + 1j)) * turn + (1 + 1j) - 3j) * 2.5 + 3j
-    np.testing.assert_allclose(moved.position(s), expected, atol=1e-14)  # rounding near 10
-    np.testing.assert_allclose(
+    assert_near(moved.position(s), expected, atol=1e-14)  # rounding near 10
+    assert_near(
         moved.derivative(s), base.derivative(s) * turn * 2.5, atol=1e-13
     )
     assert (moved.edge, moved.joins, moved.knots, moved.start) == (
@@ -256,7 +261,7 @@ def test_a_thousand_small_turns_lose_nothing_but_rounding():
         turned = turned.turned(0.36, about=(0.25, 0.0))
     s = np.linspace(0, 1, 64)
     # A thousand roundings of a number near 1.
-    np.testing.assert_allclose(turned.position(s), section.position(s), atol=1e-13)
+    assert_near(turned.position(s), section.position(s), atol=1e-13)
     assert len(turned.name) < 120, turned.name
 
 
@@ -292,8 +297,8 @@ def test_circle_is_centre_plus_radius_times_unit_circle():
     s = np.random.default_rng(3).random(1000)
     circle = ob.circle(3.0, centre=(1.0, -2.0))
     unit = np.exp(2j * np.pi * s)
-    np.testing.assert_allclose(circle.position(s), 1 - 2j + 1.5 * unit, atol=2e-15)
-    np.testing.assert_allclose(circle.derivative(s), 3j * np.pi * unit, atol=2e-14)
+    assert_near(circle.position(s), 1 - 2j + 1.5 * unit, atol=2e-15)
+    assert_near(circle.derivative(s), 3j * np.pi * unit, atol=2e-14)
     assert (circle.edge, circle.joins, circle.knots, circle.start) == (None, (), (), 0.0)
 
 
@@ -301,9 +306,9 @@ def test_ellipse_has_its_length_along_the_turned_axis():
     s = np.random.default_rng(4).random(1000)
     ellipse = ob.ellipse(4.0, 1.0, centre=(1.0, 2.0), turned=40.0)
     own = (ellipse.position(s) - (1 + 2j)) * np.exp(-1j * np.radians(40.0))
-    np.testing.assert_allclose((own.real / 2) ** 2 + (own.imag / 0.5) ** 2, 1, atol=1e-14)
+    assert_near((own.real / 2) ** 2 + (own.imag / 0.5) ** 2, 1, atol=1e-14)
     tip = 1 + 2j + 2 * np.exp(1j * np.radians(40.0))
-    np.testing.assert_allclose(ellipse.position(0.0), tip, atol=1e-15)
+    assert_near(ellipse.position(0.0), tip, atol=1e-15)
     assert "turned by 40 degrees" in ellipse.name
 
 
@@ -341,7 +346,7 @@ def test_rounded_polygon_has_sides_and_arcs_of_the_radius_and_nothing_else(corne
     bends = curvature(outline, 0.5 * (ends[1:] + ends[:-1]))
     # Differences over 2e-7 of the perimeter leave 1e-9 over 1e-6.
     expected = np.select([bends > 1, bends < -1], [1 / 0.07, -1 / 0.07], 0.0)
-    np.testing.assert_allclose(bends, expected, atol=1e-5)
+    assert_near(bends, expected, atol=1e-5)
     arcs = np.count_nonzero(expected)
     assert arcs == len(corners)
     re_entrant = 0 if len(corners) == 4 else 1
@@ -352,9 +357,9 @@ def test_rounded_square_has_the_area_and_perimeter_of_elementary_geometry():
     outline = ob.polygon(SQUARE, 0.1)
     speed = np.abs(outline.derivative(np.random.default_rng(5).random(1000)))
     # The parameter goes with arc length: the speed is the perimeter, everywhere.
-    np.testing.assert_allclose(speed, 4 - 0.8 + 0.2 * np.pi, rtol=1e-14)
+    assert_near(speed, 4 - 0.8 + 0.2 * np.pi, rtol=1e-14)
     # Chords of 1e5 pieces cut off less than 1e-9.
-    np.testing.assert_allclose(area(outline), 1 - 0.01 * (4 - np.pi), atol=1e-8)
+    assert_near(area(outline), 1 - 0.01 * (4 - np.pi), atol=1e-8)
 
 
 def test_tangents_are_continuous_at_the_joins_of_a_rounded_polygon():
@@ -362,8 +367,8 @@ def test_tangents_are_continuous_at_the_joins_of_a_rounded_polygon():
     joins = np.array(outline.joins)
     after, before = outline.derivative(joins + 1e-13), outline.derivative(joins - 1e-13)
     # An arc turns by 1e-13 perimeters over its radius in between.
-    np.testing.assert_allclose(after, before, atol=1e-10)
-    np.testing.assert_allclose(
+    assert_near(after, before, atol=1e-10)
+    assert_near(
         outline.position(joins + 1e-15), outline.position(joins - 1e-15), atol=5e-14
     )
 
@@ -372,7 +377,7 @@ def test_polygon_starts_in_the_middle_of_the_first_corner_whatever_its_sense():
     middle = 0.1 * (1 - np.sqrt(0.5)) * (1 + 1j)
     for corners in (SQUARE, SQUARE[:1] + SQUARE[:0:-1]):
         outline = ob.polygon(corners, 0.1)
-        np.testing.assert_allclose(outline.position(outline.start), middle, atol=1e-15)
+        assert_near(outline.position(outline.start), middle, atol=1e-15)
 
 
 def test_polygon_whose_first_point_lies_on_a_side_starts_there():
@@ -380,23 +385,23 @@ def test_polygon_whose_first_point_lies_on_a_side_starts_there():
     for points in (corners, corners[:1] + corners[:0:-1]):
         outline = ob.polygon(points, 0.1)
         assert outline.name == "polygon of 4 corners with corner radius 0.1"
-        np.testing.assert_allclose(outline.position(outline.start), 0.3, atol=1e-15)
+        assert_near(outline.position(outline.start), 0.3, atol=1e-15)
 
 
 def test_points_on_a_side_do_not_limit_the_radius():
     with_points = [(0, 0), (0.05, 0), (0.1, 0), (1, 0), (1, 0.9), (1, 1), (0, 1)]
     plain, crowded = ob.polygon(SQUARE, 0.4), ob.polygon(with_points, 0.4)
     s = np.linspace(0, 1, 100)
-    np.testing.assert_allclose(crowded.position(s), plain.position(s), atol=1e-15)
+    assert_near(crowded.position(s), plain.position(s), atol=1e-15)
 
 
 def test_square_with_the_largest_radius_is_a_circle():
     outline = ob.polygon(SQUARE, 0.5)
     z = outline.position(np.linspace(0, 1, 1000))
-    np.testing.assert_allclose(np.abs(z - 0.5 - 0.5j), 0.5, atol=1e-15)
+    assert_near(np.abs(z - 0.5 - 0.5j), 0.5, atol=1e-15)
     assert outline.joins == ()
     on_side = ob.polygon([(0.5, 0.0), *SQUARE[1:], SQUARE[0]], 0.5)
-    np.testing.assert_allclose(on_side.position(on_side.start), 0.5, atol=1e-15)
+    assert_near(on_side.position(on_side.start), 0.5, atol=1e-15)
 
 
 def test_radius_that_does_not_fit_is_refused_with_the_side_and_the_largest_that_fits():
@@ -462,7 +467,7 @@ def test_repeated_points_and_the_sense_of_rotation_change_nothing(make):
     backward = make(L_SHAPE[:1] + L_SHAPE[:0:-1])
     s = np.linspace(0, 1, 200)
     for other in (repeated, backward):
-        np.testing.assert_allclose(other.position(s), plain.position(s), atol=1e-14)
+        assert_near(other.position(s), plain.position(s), atol=1e-14)
         assert other.start == pytest.approx(plain.start, abs=1e-15)
 
 
@@ -495,7 +500,7 @@ def test_crossings_of_random_polygons_are_those_that_shapely_finds():
         else:
             assert valid, f"crosses: {points.tolist()}"
             # Five thousand chords cut off corners of at most a perimeter's five-thousandth.
-            np.testing.assert_allclose(area(outline, 5000), shapely.Polygon(points).area, atol=1e-3)
+            assert_near(area(outline, 5000), shapely.Polygon(points).area, atol=1e-3)
         found.append(valid)
     assert 30 < sum(found) < 120, f"{sum(found)} of 150 are valid: the test says little"
 
@@ -521,6 +526,21 @@ def test_crossings_of_random_splines_are_those_that_shapely_finds():
     assert 10 < sum(found) < 50, f"{sum(found)} of 60 do not cross: the test says little"
 
 
+def test_crossing_is_found_where_a_short_chord_meets_a_long_bent_one():
+    points = [(0.524, 0.03), (0.615, 0.204), (0.299, 0.461), (0.088, 0.968), (-0.095, 0.762),
+              (-0.657, 0.334), (-0.857, 0.024), (-0.495, -0.192), (-0.71, -0.492),
+              (-0.022, -0.678), (-0.139, -0.656), (0.593, -0.667), (0.286, 0.028)]
+    with pytest.raises(ob.InputError, match=r"near \(0.0092\d*, -0.692"):
+        ob.outline(points, sharp=0)
+
+
+def test_small_loop_at_a_bend_is_found():
+    points = [(0.831, 0.06), (0.424, 0.563), (0.271, 0.094), (-1.038, 0.416), (-0.647, -0.182),
+              (-0.156, -0.535), (-0.016, -0.171)]
+    with pytest.raises(ob.InputError, match=r"near \(0.213\d*, 0.0368"):
+        ob.outline(points, sharp=0)
+
+
 # --- a curve through points -----------------------------------------------------------------------
 
 
@@ -529,7 +549,7 @@ def test_smooth_outline_passes_through_its_points_in_order(count):
     points = round_points(count, 2.0, 1.0, shift=0.3)
     outline = ob.outline(points)
     at_knots = pairs(outline.position(np.array(outline.knots)))
-    np.testing.assert_allclose(at_knots, points, atol=1e-14)
+    assert_near(at_knots, points, atol=1e-14)
     assert (outline.start, outline.edge, outline.joins) == (0.0, None, ())
 
 
@@ -543,8 +563,8 @@ def test_sharp_outline_has_its_edge_at_the_point_and_starts_at_the_first(count, 
     if backward:
         points, edge = points[::-1], count - 1 - edge
     outline = ob.outline(points, sharp=int(edge))
-    np.testing.assert_allclose(outline.position(outline.edge), 1.0, atol=1e-15)
-    np.testing.assert_allclose(
+    assert_near(outline.position(outline.edge), 1.0, atol=1e-15)
+    assert_near(
         outline.position(outline.start), complex(*points[0]), atol=1e-14
     )
     assert area(outline) > 0
@@ -557,11 +577,11 @@ def test_sharp_counts_repeated_points_as_the_caller_does():
     points = ob.four_digit("2412").points(60)
     closed = np.concatenate([points[10:], points[:11]])
     outline = ob.outline(closed, sharp=50)
-    np.testing.assert_allclose(outline.position(outline.edge), 1.0, atol=1e-15)
+    assert_near(outline.position(outline.edge), 1.0, atol=1e-15)
     closed = np.concatenate([points[:30], points[29:], points[:1]])
     for sharp in (0, -1, 61):
         outline = ob.outline(closed, sharp=sharp)
-        np.testing.assert_allclose(outline.position(outline.edge), 1.0, atol=1e-15)
+        assert_near(outline.position(outline.edge), 1.0, atol=1e-15)
 
 
 def test_uneven_points_on_a_circle_are_followed_with_the_sixth_order():
@@ -584,7 +604,7 @@ def test_spline_through_a_section_follows_it():
     thickness = 0.6 * (0.2969 * np.sqrt(x) - 0.126 * x - 0.3516 * x**2 + 0.2843 * x**3
                        - 0.1036 * x**4)
     # Measured 3e-6, next to the nose, where the section's own third derivative jumps.
-    np.testing.assert_allclose(upper[x > 1e-3], thickness[x > 1e-3], atol=1e-5)
+    assert_near(upper[x > 1e-3], thickness[x > 1e-3], atol=1e-5)
 
 
 def test_parameter_of_a_spline_is_nearly_its_arc_length():
@@ -639,7 +659,7 @@ def test_derivative_of_an_analytic_curve_is_good_to_rounding(function, derivativ
 
 def test_jumps_of_curvature_are_found_to_rounding():
     outline = ob.curve(stadium_function)
-    np.testing.assert_allclose(outline.joins, STADIUM_JOINS, atol=1e-12)
+    assert_near(outline.joins, STADIUM_JOINS, atol=1e-12)
     exact = stadium(EVERYWHERE + 0.1234567)[1]
     away = np.abs(EVERYWHERE[:, None] - STADIUM_JOINS).min(axis=1) > 1e-12
     error = np.abs(outline.derivative(EVERYWHERE) - exact)[away]
@@ -652,7 +672,8 @@ def test_jumps_of_curvature_are_found_at_round_parameters_too(shift):
     joins = (np.array([0, 2, 2 + np.pi, 4 + np.pi]) / STADIUM_LENGTH + shift) % 1
     away = (np.array(outline.joins)[:, None] - joins + 0.5) % 1 - 0.5
     assert len(outline.joins) == 4
-    np.testing.assert_allclose(np.abs(away).min(axis=0), 0, atol=1e-12)
+    # One of them may lie 1e-4 from s = 0: pieces so short are compared to fewer digits.
+    assert_near(np.abs(away).min(axis=0), 0, atol=1e-9)
 
 
 def test_a_jump_of_the_third_derivative_is_a_join():
@@ -661,7 +682,7 @@ def test_a_jump_of_the_third_derivative_is_a_join():
         return pairs(radius * np.exp(2j * np.pi * s))
 
     # A jump that shows in the third derivative only: the cube root of rounding, and better.
-    np.testing.assert_allclose(ob.curve(bent).joins, [0.3], atol=1e-5)
+    assert_near(ob.curve(bent).joins, [0.3], atol=1e-5)
 
 
 def test_derivative_toward_a_sharp_edge_is_as_good_as_the_points():
@@ -683,16 +704,27 @@ def test_derivative_is_good_to_rounding_beside_an_edge_at_the_origin():
     assert error.max() < 1e-10, error.max()
 
 
+@pytest.mark.parametrize("sense", [1, -1])
+def test_functions_are_never_asked_outside_their_interval(sense):
+    def strict(s):
+        assert s.dtype == float and s.ndim == 1 and (s >= 0).all() and (s < 1).all(), s
+        return ellipse_function(sense * s)
+
+    outline = ob.curve(strict)
+    s = np.array([[0.0, 1.0, -1e-300], [1 - 2.0**-53, -3.5, 1e9]])
+    assert outline.position(s).shape == outline.derivative(s).shape == (2, 3)
+
+
 def test_clockwise_functions_are_turned_round():
     outline = ob.curve(lambda s: karman_trefftz_function(-(s - 0.3) % 1), sharp=0.3)
     plain = ob.curve(karman_trefftz_function, sharp=0.0)
     assert area(outline) > 0
-    np.testing.assert_allclose(outline.position(outline.edge), POWER, atol=1e-12)
-    np.testing.assert_allclose(
+    assert_near(outline.position(outline.edge), POWER, atol=1e-12)
+    assert_near(
         outline.position(outline.start), complex(*karman_trefftz_function(0.3)), atol=1e-15
     )
     s = np.linspace(0.01, 0.99, 99)
-    np.testing.assert_allclose(
+    assert_near(
         outline.derivative(outline.edge + s), plain.derivative(s), rtol=1e-8
     )
 
@@ -700,7 +732,7 @@ def test_clockwise_functions_are_turned_round():
 def test_a_four_digit_section_as_a_function_has_its_joins_found():
     section = ob.four_digit("2412")
     outline = ob.curve(lambda s: pairs(section.position(s)), sharp=0.0)
-    np.testing.assert_allclose(outline.joins, section.joins, atol=1e-11)
+    assert_near(outline.joins, section.joins, atol=1e-11)
     s = np.random.default_rng(9).random(10_000)
     error = np.abs(outline.derivative(s) - section.derivative(s))
     assert error.max() < 1e-9, error.max()  # of 4
@@ -733,7 +765,7 @@ def test_corners_of_half_a_degree_are_joins_and_of_two_degrees_are_refused():
             (1 - size * np.abs(np.sin(2 * np.pi * (s - 0.2)) / 2)) * np.exp(2j * np.pi * s)
         )
 
-    np.testing.assert_allclose(ob.curve(kinked(0.5)).joins, [0.2, 0.7], atol=1e-12)
+    assert_near(ob.curve(kinked(0.5)).joins, [0.2, 0.7], atol=1e-12)
     with pytest.raises(ob.InputError, match="near s = 0.2,|near s = 0.7,"):
         ob.curve(kinked(2.5))
 
@@ -742,6 +774,10 @@ def test_corners_of_half_a_degree_are_joins_and_of_two_degrees_are_refused():
 def test_sharp_beside_the_edge_is_refused(sharp):
     with pytest.raises(ob.InputError, match="corner|smooth"):
         ob.curve(karman_trefftz_function, sharp=sharp)
+
+
+@pytest.mark.parametrize("sharp", [0.0, 0.3, 0.5])
+def test_sharp_on_a_smooth_wall_is_refused_even_at_its_sharpest_bend(sharp):
     with pytest.raises(ob.InputError, match=f"sharp = {sharp}: .* smooth"):
         ob.curve(ellipse_function, sharp=sharp)
 
@@ -795,7 +831,7 @@ def test_a_parameter_with_unbounded_speed_is_followed_all_the_same():
         return pairs(x + 1j * y)
 
     outline = ob.curve(by_height)
-    np.testing.assert_allclose(np.sort(outline.joins), [0.43, 0.93], atol=1e-9)
+    assert_near(np.sort(outline.joins), [0.43, 0.93], atol=1e-9)
 
 
 # --- NACA four-digit sections ---------------------------------------------------------------------
@@ -806,16 +842,16 @@ def test_half_thickness_of_the_0012_is_that_of_naca_report_460():
     section = ob.four_digit("0012")
     for x, ordinate in {0.3: 0.06002, 0.1: 0.04683, 0.5: 0.05294, 0.7: 0.03664}.items():
         z = section.position(0.5 * (1 - np.sqrt(x)))
-        np.testing.assert_allclose(z.real, x, atol=1e-15)
+        assert_near(z.real, x, atol=1e-15)
         # Closing the edge takes 0.6 * 0.0021 x^4 from the ordinate: 1e-5 at 30 percent. The rest
         # is half a unit of the last printed digit, with room for a slip of memory.
-        np.testing.assert_allclose(z.imag + 0.6 * 0.0021 * x**4, ordinate, atol=1.1e-5)
+        assert_near(z.imag + 0.6 * 0.0021 * x**4, ordinate, atol=1.1e-5)
 
 
 def test_nose_radius_is_that_of_naca_report_460():
     """NACA Report 460: leading-edge radius 1.1019 thickness^2, 1.58 percent for the 0012."""
     section = ob.four_digit("0012")
-    np.testing.assert_allclose(1 / curvature(section, 0.5 - 1e-5), 0.0158, atol=2e-4)
+    assert_near(1 / curvature(section, 0.5 - 1e-5), 0.0158, atol=2e-4)
 
 
 def test_sections_close_at_an_edge_at_the_end_of_the_chord_with_the_nose_at_the_origin():
@@ -856,11 +892,11 @@ def test_the_camber_line_has_its_greatest_height_where_the_code_says():
     section = ob.four_digit("4415")
     upper, lower = section.position(np.array(section.joins)[[0, 2]])
     # The camber line is level there, so that the two points are right above each other.
-    np.testing.assert_allclose(0.5 * (upper + lower), 0.4 + 0.04j, atol=1e-15)
-    x = 0.2
-    s = 0.5 * (1 - np.sqrt(x))
-    middle = 0.5 * (section.position(s) + section.position(1 - s))
-    np.testing.assert_allclose(middle, x + 1j * 0.04 * x * (0.8 - x) / 0.16, atol=1e-15)
+    assert_near(0.5 * (upper + lower), 0.4 + 0.04j, atol=1e-15)
+    for x, height in ((0.2, 0.04 * 0.2 * 0.6 / 0.16), (0.7, 0.04 * 0.27 / 0.36)):
+        s = 0.5 * (1 - np.sqrt(x))
+        middle = 0.5 * (section.position(s) + section.position(1 - s))
+        assert_near(middle, x + 1j * height, atol=1e-15)
 
 
 def test_thickness_is_laid_off_perpendicular_to_the_camber_line():
@@ -869,13 +905,13 @@ def test_thickness_is_laid_off_perpendicular_to_the_camber_line():
     across = section.position(s) - section.position(1 - s)
     x = (1 - 2 * s) ** 2
     slope = np.where(x < 0.4, 0.12 / 0.16 * (0.4 - x), 0.12 / 0.36 * (0.4 - x))
-    np.testing.assert_allclose((across * (1 - 1j * slope)).real, 0, atol=1e-15)
+    assert_near((across * (1 - 1j * slope)).real, 0, atol=1e-15)
 
 
 def test_joins_are_the_nose_and_the_places_of_greatest_camber():
     assert ob.four_digit("0012").joins == (0.5,)
     joins = ob.four_digit("2412").joins
-    np.testing.assert_allclose(joins, [0.5 - np.sqrt(0.1), 0.5, 0.5 + np.sqrt(0.1)], rtol=1e-15)
+    assert_near(joins, [0.5 - np.sqrt(0.1), 0.5, 0.5 + np.sqrt(0.1)], rtol=1e-15)
 
 
 def test_corners_at_the_greatest_camber_are_as_small_as_the_docstring_says():
@@ -883,7 +919,7 @@ def test_corners_at_the_greatest_camber_are_as_small_as_the_docstring_says():
         section = ob.four_digit(code)
         joins = np.array(section.joins)[[0, 2]]
         turn = np.angle(section.derivative(joins + 1e-9) / section.derivative(joins - 1e-9))
-        np.testing.assert_allclose(np.degrees(np.abs(turn).max()), degrees, rtol=0.02)
+        assert_near(np.degrees(np.abs(turn).max()), degrees, rtol=0.02)
 
 
 @pytest.mark.parametrize(
@@ -946,7 +982,7 @@ def test_every_way_of_writing_a_square_gives_the_same_polygon(write, text):
     expected = ob.polygon(SQUARE, 0.1)
     outline = ob.read_outline(write(text), corner_radius=0.1)
     s = np.linspace(0, 1, 100)
-    np.testing.assert_allclose(outline.position(s), expected.position(s), atol=1e-15)
+    assert_near(outline.position(s), expected.position(s), atol=1e-15)
     assert outline.name == f"{expected.name}, read from tower.csv"
 
 
@@ -970,6 +1006,7 @@ def test_without_corner_radius_the_points_lie_on_a_curve(write):
         ("0 0\n1 nan\n1 1", "line 2: found '1 nan'"),
         ("0 0\n1 1_0\n1 1", "line 2: found '1 1_0'"),
         ("x y\nlength width\n0 0\n1 0", "line 2: found 'length width'"),
+        ("1.O 0 0\n0 0\n1 0\n1 1", "line 1: found '1.O 0 0'"),
         ("O.5 0.0\n1 0\n1 1", "line 1: found 'O.5 0.0'"),
         ("", "holds no points"),
         ("# nothing\n", "holds no points"),

@@ -1,7 +1,9 @@
 """What a body standing in a stream does to the readings of a sensor mounted on it or beside it."""
 
 from offbody._version import __version__
+from offbody.accuracy import Tolerance
 from offbody.bearings import from_bearing, to_bearing
+from offbody.corrections import Corrected, Correction, Reason
 from offbody.errors import AccuracyWarning, InputError
 from offbody.model import Model, inside, solve
 from offbody.outlines import (
@@ -18,22 +20,39 @@ from offbody.parallel import threads
 from offbody.sensors import CrossedPaths, DiscSensor, PathSensor, PointSensor, WallPort
 from offbody.surroundings import Duct, Ground, OpenStream, Row
 from offbody.surveys import Survey, survey
+from offbody.uncertainties import (
+    InfluenceQuantity,
+    MonteCarlo,
+    Normal,
+    Rectangular,
+    Uncertainty,
+    uncertainty,
+)
 from offbody.wakes import Wake
 
 __all__ = [
     "AccuracyWarning",
+    "Corrected",
+    "Correction",
     "CrossedPaths",
     "DiscSensor",
     "Duct",
     "Ground",
+    "InfluenceQuantity",
     "InputError",
     "Model",
+    "MonteCarlo",
+    "Normal",
     "OpenStream",
     "Outline",
     "PathSensor",
     "PointSensor",
+    "Reason",
+    "Rectangular",
     "Row",
     "Survey",
+    "Tolerance",
+    "Uncertainty",
     "Wake",
     "WallPort",
     "__version__",
@@ -50,4 +69,5 @@ __all__ = [
     "survey",
     "threads",
     "to_bearing",
+    "uncertainty",
 ]

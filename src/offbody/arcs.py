@@ -67,6 +67,11 @@ class Arcs:
         self.edge = None if outline.edge is None else 0.0
         self.start = float(self.at_parameter(np.array([outline.start]))[0]) % self.length
 
+    @property
+    def is_broken(self):
+        """Whether panels have to shrink toward its breaks; else its one break is but a start."""
+        return self.edge is not None or bool(self.outline.joins)
+
     def _stretches(self, corners):
         """Ends, in the unrolled parameter, of stretches that Gauss quadrature resolves."""
         cuts = [np.linspace(lo, hi, 5)[:-1] for lo, hi in zip(corners, corners[1:], strict=False)]

@@ -8,14 +8,16 @@ A case is a TOML file. Every key, with [] round what may be left out:
     [stream]
     bearings = "all"             where the wind comes FROM, clockwise from north (north is +y); or
     directions = "all"           where the stream goes TO, counter-clockwise from +x
-                                 "all" is every degree (over a ground: both ways along it); else
+                                 "all" is every degree (between walls: both ways along x); else
                                  a step, a list, or { from = 200, to = 280, step = 2 }
     [prevailing_bearing]         one, or a list: the winds that the pictures show
     [speed], [speed_unit]        of the undisturbed stream; only ever printed
 
     [surroundings]               left out: an open stream
-    kind = "open" or "ground"
-    [y]                          height of the ground, 0 if left out
+    kind                         "open"
+                                 "ground"     [y], its height, 0 if left out
+                                 "duct"       lower, upper: the heights of its walls
+                                 "row"        pitch: copies of the bodies along y, without end
 
     [[body]]
     shape                        "circle"     diameter, [centre]
@@ -54,8 +56,12 @@ A case is a TOML file. Every key, with [] round what may be left out:
 
     [field]                      the region of the pictures and of the dense grid
     [x], [y]                     [from, to], both; left out: round the bodies and the sensors
-    [spacing] or [points]        one length, or [along x, along y]
+    [spacing] or [points]        one length (rounded to divide the region), or how many lines:
+                                 [along x, along y]
     [bearing]                    one, or a list; left out: the prevailing wind, else the worst
+
+    [record]                     the columns of the sensors' record, for `offbody correct`; see
+                                 ``offbody.records`` for its keys
 
 ``turned`` is in degrees, counter-clockwise: about the centre, the nose, or the origin of the
 points. A case says its angles one way: with ``direction`` in place of ``bearing`` in every key,
@@ -77,6 +83,8 @@ from scipy.optimize import brentq
 import offbody as ob
 from offbody.checks import as_count, as_number, as_point, as_points, as_reals, nearest_name
 from offbody.errors import InputError
+from offbody.records import read_settings
+from offbody.surroundings import usual_directions
 
 LENGTH_UNITS = ("m", "cm", "mm", "km", "ft", "in")
 GRID_INTERVALS = 360  # along the longer side of the region, if the case does not say
@@ -134,6 +142,10 @@ class Case:
     def directions(self, angles):
         """Directions of the stream for angles in the case's own convention."""
         return ob.from_bearing(angles) if self.by_bearing else angles
+
+    def speed_in_words(self, before):
+        """The undisturbed speed after a separator, or nothing where it is not given."""
+        return f"{before}undisturbed speed {self.speed:g} {self.speed_unit}" if self.speed else ""
 
     def in_its_names(self, sentence):
         """A sentence of the library, which counts from zero, in the case's own names."""
@@ -193,8 +205,12 @@ class Case:
         margin = 0.2 * size + max(xmax - xmin, ymax - ymin) * (0.8 if not self.sensors else 0.3)
         lean = np.maximum(0.3 * size - (high - low) / 2, 0.0)
         low, high = low - margin - lean, high + margin + lean
-        if isinstance(self.surroundings, ob.Ground):
-            low[1] = self.surroundings.y
+        # Walls are where the region ends, if they are not far off.
+        walls = self.surroundings.walls
+        if walls and walls[0] > low[1] - size:
+            low[1] = walls[0]
+        if len(walls) > 1 and walls[1] < high[1] + size:
+            high[1] = walls[1]
         return np.stack([low, high], axis=-1)
 
 
@@ -234,6 +250,9 @@ def read_case(path):
     sensors, booms = _sensors(top, bodies)
     panels, order = _panels(top.table("panels", optional=True), len(bodies))
     region = _region(top.table("field", optional=True))
+    if top.has("record"):
+        with _located(reading.file):
+            read_settings(top.entries["record"], reading.by_bearing)
     top.close()
     return Case(
         file=os.fspath(path),
@@ -493,13 +512,21 @@ class _Table:
 
 
 def _surroundings(section):
-    kind = section.choice("kind", ("open", "ground"), "open")
-    if kind == "ground":
-        y = section.number("y", 0.0)
-        section.close()
-        return ob.Ground(y)
+    kind = section.choice("kind", tuple(_SURROUNDINGS), "open")
+    make, sizes = _SURROUNDINGS[kind]
+    given = [section.number(key, *default) for key, *default in sizes]
     section.close()
-    return ob.OpenStream()
+    with section.located():
+        return make(*given)
+
+
+# By kind: what it makes, of which numbers, with what each is if left out.
+_SURROUNDINGS = {
+    "open": (ob.OpenStream, ()),
+    "ground": (ob.Ground, (("y", 0.0),)),
+    "duct": (ob.Duct, (("lower",), ("upper",))),
+    "row": (ob.Row, (("pitch",),)),
+}
 
 
 def _stream(section):
@@ -518,10 +545,8 @@ def _angles(section, key):
     value = section.entries[key]
     if isinstance(value, str):
         section.choice(key, ("all",))
-        if isinstance(section.reading.surroundings, ob.Ground):
-            along = np.array([0.0, 180.0])
-            return ob.to_bearing(along) if section.reading.by_bearing else along
-        return np.arange(360.0)
+        directions = usual_directions(section.reading.surroundings)
+        return np.sort(ob.to_bearing(directions)) if section.reading.by_bearing else directions
     if isinstance(value, dict):
         return _angle_range(section.table(key))
     if isinstance(value, list):

@@ -6,8 +6,8 @@ import numpy as np
 from scipy.ndimage import distance_transform_edt
 
 from offbody.reports import LIMIT
-from offbody.surroundings import Ground
-from offbody.surveys import LEE_HALF_ANGLE
+from offbody.surroundings import holds
+from offbody.separations import LEE_HALF_ANGLE
 
 DOTS_PER_INCH = 150
 SENSORS_PER_PICTURE = 8
@@ -81,8 +81,8 @@ def draw_map(path, case, model, x, y, velocity, angle, caution=""):
     axes = figure.add_subplot()
     colours = _draw_speed(axes, x, y, np.hypot(velocity[..., 0], velocity[..., 1]))
     _draw_streamlines(axes, model, x, y, direction)
-    _draw_lee(axes, model, spans, direction)
-    _draw_bodies(axes, case)
+    _draw_lee(axes, model, y, spans, direction)
+    _draw_bodies(axes, case, y)
     _draw_sensors(axes, case, model)
     _draw_stream(axes, case, angle, direction)
     _frame(axes, case, x, y, caution)
@@ -119,15 +119,14 @@ def _draw_streamlines(axes, model, x, y, direction):
     reach = abs(complex(x[-1] - x[0], y[-1] - y[0])) / 2
     heading = np.exp(1j * np.radians(direction))
     starts = middle + heading * reach * (-1 + 1j * np.linspace(-1, 1, 37))
-    if isinstance(model.surroundings, Ground):
-        starts = starts[starts.imag > model.surroundings.y]
+    starts = starts[holds(model.surroundings, starts)]
     starts = np.stack([starts.real, starts.imag], axis=-1)
     for line in model.streamlines(starts, direction, length=2.2 * reach):
         if len(line) > 1:
             axes.plot(*line.T, color=INK, linewidth=0.5, alpha=0.55, zorder=2)
 
 
-def _draw_lee(axes, model, spans, direction):
+def _draw_lee(axes, model, y, spans, direction):
     """Hatch where the survey trusts nothing: the widening strip behind a bluff body."""
     from matplotlib.patches import Polygon
 
@@ -140,20 +139,31 @@ def _draw_lee(axes, model, spans, direction):
         for corner, side in ((left, 1), (right, -1)):
             along = np.radians(direction + side * LEE_HALF_ANGLE)
             corners.append(corner + far * np.array([np.cos(along), np.sin(along)]))
-        axes.add_patch(Polygon(
-            corners, facecolor=LEE, edgecolor="#a0a0a0", hatch="////", linewidth=0, zorder=3
-        ))
+        for shift in _shifts(model.surroundings, y):
+            axes.add_patch(Polygon(
+                corners + shift, facecolor=LEE, edgecolor="#a0a0a0", hatch="////", linewidth=0,
+                zorder=3,
+            ))
 
 
-def _draw_bodies(axes, case):
+def _shifts(surroundings, y):
+    """By how much what is drawn is shifted to stand for its copies in the picture too."""
+    if surroundings.walls or not surroundings.period:
+        return [np.zeros(2)]
+    most = int((y[-1] - y[0]) / surroundings.period) + 1
+    return [np.array([0.0, n * surroundings.period]) for n in range(-most, most + 1)]
+
+
+def _draw_bodies(axes, case, y):
     for body in case.bodies:
-        axes.fill(*body.outline.points(2000).T, color=BODY, linewidth=0.5, zorder=5)
+        points = body.outline.points(2000)
+        for shift in _shifts(case.surroundings, y):
+            axes.fill(*(points + shift).T, color=BODY, linewidth=0.5, zorder=5)
     for boom in case.booms:
         if boom is not None:
             axes.plot(*boom.T, color=BODY, linewidth=1.4, zorder=4, solid_capstyle="round")
-    if isinstance(case.surroundings, Ground):
-        y = case.surroundings.y
-        axes.axhspan(min(axes.get_ylim()[0], y) - 1.0, y, color=BODY, alpha=0.6, zorder=5)
+    for wall in case.surroundings.walls:
+        axes.axhline(wall, color=BODY, linewidth=5, zorder=5)
 
 
 def _draw_sensors(axes, case, model):
@@ -227,8 +237,8 @@ def _frame(axes, case, x, y, caution):
     east, north = (", east", ", north") if case.by_bearing else ("", "")
     axes.set_xlabel(f"x{east} ({case.length_unit})")
     axes.set_ylabel(f"y{north} ({case.length_unit})")
-    speed = f", undisturbed speed {case.speed:g} {case.speed_unit}" if case.speed else ""
-    axes.set_title(_wrapped(f"{case.title}{speed}", 70), fontsize=11, parse_math=False)
+    title = case.title + case.speed_in_words(", ")
+    axes.set_title(_wrapped(title, 70), fontsize=11, parse_math=False)
     if caution:
         axes.text(
             0.5, 0.97, _wrapped(f"not to be trusted: {caution}", 70), transform=axes.transAxes,
@@ -266,6 +276,7 @@ def _draw_page(path, case, table, page):
     figure = _figure(10.0, 1.2 + 2.4 * len(page))
     rows = figure.subplots(len(page), 2, sharex=True, squeeze=False)
     order, angles = _laid_out(table.angles)
+    step = 45 if np.ptp(angles) > 120 else 15 if np.ptp(angles) > 30 else 5
     for (left, right), place in zip(rows, page, strict=True):
         for axes, column in zip((left, right), _columns(case, table, place), strict=True):
             _draw_column(axes, angles, table.trust[order, place], column, order)
@@ -276,7 +287,7 @@ def _draw_page(path, case, table, page):
             else "direction the stream goes to (degrees)"
         )
         axes.set_xlim(*_ends(angles))
-        axes.xaxis.set_major_locator(MultipleLocator(45 if np.ptp(angles) > 120 else 15))
+        axes.xaxis.set_major_locator(MultipleLocator(step))
         axes.xaxis.set_major_formatter(lambda angle, _: f"{angle - 360 * (angle > 360):g}")
     figure.suptitle(_wrapped(case.title, 90), fontsize=12, parse_math=False)
     figure.supxlabel(

@@ -1,4 +1,4 @@
-"""The command line: a case file in, a folder of tables and pictures out."""
+"""The command line: a case file in, a folder out; a record in, a corrected record out."""
 
 import argparse
 import contextlib
@@ -12,10 +12,9 @@ import numpy as np
 from tqdm import tqdm
 
 import offbody as ob
-from offbody import charts, reports
+from offbody import charts, records, reports
 from offbody.cases import read_case
 from offbody.errors import AccuracyWarning, InputError
-from offbody.surroundings import Ground
 
 DONE, REFUSED, INTERRUPTED = 0, 2, 130
 NODES_AT_ONCE = 20_000  # of a dense grid, between two moves of the progress bar
@@ -81,6 +80,7 @@ def _parser():
     _add_verb(verbs, "field", _field, "the velocity on a dense grid round the bodies of a case")
     demo = _add_verb(verbs, "demo", _demo, "the survey of a built-in case, which it writes out too")
     demo.set_defaults(out="offbody-demo")
+    _add_correct(verbs)
     return parser
 
 
@@ -100,6 +100,89 @@ def _add_verb(verbs, name, run, purpose):
     verb.add_argument("--overwrite", action="store_true", help="replace the folder if it exists")
     verb.set_defaults(verb=run)
     return verb
+
+
+def _add_correct(verbs):
+    purpose = "the undisturbed speed and direction of a record, by a survey"
+    verb = verbs.add_parser(
+        "correct", help=purpose, description=purpose[0].upper() + purpose[1:] + ".",
+        epilog="What is left out is as the [record] of the survey's case says; "
+               "`python -m pydoc offbody.records` lists its keys.\n\n" + EPILOG.split("\n\n")[1],
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    verb.add_argument("record", metavar="RECORD.csv", help="one header line, one row per line")
+    verb.add_argument(
+        "--with", metavar="SURVEY.json", required=True, dest="survey",
+        help="what `offbody survey` wrote, or a saved correction",
+    )
+    verb.add_argument("--out", metavar="FILE", required=True,
+                      help="the file to write, whole or not at all")
+    verb.add_argument("--overwrite", action="store_true", help="replace the file if it exists")
+    for quantity in ("speed", "bearing", "direction"):
+        verb.add_argument(f"--{quantity}", metavar="SENSOR=COLUMN", action="append",
+                          help=f"the column of a sensor's {quantity}; may be repeated")
+    verb.add_argument("--time", metavar="COLUMN", help="a column to carry over as it stands")
+    verb.add_argument("--spread", metavar="COLUMN",
+                      help="the column of the direction's standard deviation, degrees")
+    verb.add_argument("--missing", metavar="CELL", action="append",
+                      help="a cell that means missing, such as -999; may be repeated")
+    verb.add_argument("--separator", metavar="C", help="the character between cells")
+    verb.add_argument("--decimal", metavar="C", help="the mark before the decimals, . or ,")
+    verb.add_argument("--north-offset", metavar="[SENSOR=]DEGREES", action="append",
+                      help="to add to recorded directions; may be repeated")
+    verb.add_argument("--calm-below", metavar="SPEED", help="a lower speed is a calm")
+    verb.add_argument("--calms", metavar="keep|blank", help="what a calm's speed shall be")
+    verb.add_argument("--choose", metavar="best|first|mean", help="among several sensors")
+    verb.set_defaults(verb=_correct)
+
+
+def _correct(options):
+    """Correct a record into a file; returns what to print."""
+    columns = {
+        quantity: dict(_named(f"--{quantity}", word, "SENSOR=COLUMN") for word in words)
+        for quantity in ("speed", "bearing", "direction")
+        if (words := getattr(options, quantity))
+    }
+    for key in ("time", "spread", "missing", "separator", "decimal"):
+        columns |= {key: value} if (value := getattr(options, key)) is not None else {}
+    settings = {
+        key: value for key in ("calms", "choose") if (value := getattr(options, key)) is not None
+    }
+    if options.calm_below is not None:
+        settings["calm_below"] = _number("calm_below", options.calm_below)
+    if options.north_offset is not None:
+        settings["north_offset"] = _north_offset(options.north_offset)
+    correction, columns = records.prepare(options.survey, columns, settings)
+    size = os.path.getsize(options.record) if os.path.isfile(options.record) else None
+    with tqdm(total=size, desc="correcting", unit="B", unit_scale=True, file=sys.stderr,
+              disable=None, leave=False) as bar:
+        tally = records.correct_record(
+            options.record, correction, columns, options.out, options.overwrite, bar.update
+        )
+    page = tally.summary(options.out, correction.by_bearing)
+    return f"{page}written to {Path(options.out)}\n"
+
+
+def _named(flag, word, expected):
+    name, mark, value = word.partition("=")
+    if not mark or not name or not value:
+        raise InputError(f"{flag} {word}: expected {expected}")
+    return name, value
+
+
+def _north_offset(words):
+    """One number for all sensors, or one for each that is named."""
+    if len(words) == 1 and "=" not in words[0]:
+        return _number("north_offset", words[0])
+    named = (_named("--north-offset", word, "SENSOR=DEGREES") for word in words)
+    return {sensor: _number("north_offset", value) for sensor, value in named}
+
+
+def _number(name, word):
+    try:
+        return float(word)
+    except ValueError:
+        raise InputError(f"{name} must be a number, got {word!r}") from None
 
 
 def _survey(options):
@@ -211,7 +294,7 @@ def _pictures(stem, angles):
 
 
 def _velocity(case, model, x, y, angle):
-    """Velocity on the tensor grid for one wind, NaN inside bodies and below the ground."""
+    """Velocity on the tensor grid for one wind, NaN where there is no flow."""
     direction = float(case.directions(angle))
     rows = max(1, NODES_AT_ONCE // len(x))
     parts = []
@@ -219,10 +302,7 @@ def _velocity(case, model, x, y, angle):
         for first in range(0, len(y), rows):
             parts.append(model.grid(x, y[first : first + rows], direction))
             bar.update(len(parts[-1]))
-    velocity = np.concatenate(parts)
-    if isinstance(case.surroundings, Ground):
-        velocity[y < case.surroundings.y] = np.nan
-    return velocity
+    return np.concatenate(parts)
 
 
 def _draw_map(path, case, model, x, y, velocity, angle):

@@ -18,18 +18,11 @@ OVER_TWO_PI_I = 1.0 / (2j * np.pi)
 
 
 def wall_influence(panels, surroundings):
-    """Tangential velocity at the nodes, just outside, per unit strength at the nodes.
-
-    Returns
-    -------
-    tangential, source_tangential : (N, N) arrays
-        Of the vortices, and of the sources (positive outward).
-    """
-    tangential, _, source = images.matrices(
+    """(N, N) tangential velocity at the nodes, just outside, of unit vortex strengths there."""
+    return images.matrix(
         panels, surroundings, lambda z, turn: _node_influence(panels, z, turn),
         panels.nodes, panels.tangents,
     )
-    return tangential, source
 
 
 def _node_influence(panels, z, turn):

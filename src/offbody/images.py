@@ -123,40 +123,28 @@ def _row(copies, free, charges, z):
     return total
 
 
-def matrices(panels, surroundings, free, z, turn):
-    """(len(z), N) real and imaginary parts of turn times the influence at z, images included.
+def matrix(panels, surroundings, free, z, turn):
+    """(len(z), N) real part of turn times the influence of unit vortices at z, images included.
 
-    free(z, turn) : those parts for the panels alone.
-
-    Returns
-    -------
-    real, imag, source_real
-        Of unit vortex strengths at the nodes, and the real part of unit sources: with a mirror,
-        the image of a source is a source, while that of a vortex turns the other way.
+    free(z, turn) : the real and imaginary parts of it for the panels alone.
     """
-    real, imag = _row_matrices(panels, surroundings, free, z, turn)
-    if surroundings.mirror is None:
-        return real, imag, -imag
-    image = reflected(surroundings, z)
-    image_real, image_imag = _row_matrices(panels, surroundings, free, image, turn.conj())
-    return real + image_real, imag - image_imag, -(imag + image_imag)
+    real = _row_matrix(panels, free, z, turn)
+    if surroundings.mirror is not None:
+        real += _row_matrix(panels, free, reflected(surroundings, z), turn.conj())
+    return real
 
 
-def _row_matrices(panels, surroundings, free, z, turn):
-    if panels.copies is None:
-        return free(z, turn)
+def _row_matrix(panels, free, z, turn):
     copies = panels.copies
-    z = copies.home(z)
-    # The nodes themselves are the targets here, which are abreast of the bodies.
-    real, imag = free(z, turn)
+    if copies is None:
+        return free(z, turn)[0]
+    z = copies.home(z)  # the targets are the nodes, or their reflections: abreast of the bodies
+    real, _ = free(z, turn)
     for n in range(1, copies.nearest + 1):
         for shift in (1j * n * copies.period, -1j * n * copies.period):
-            more_real, more_imag = free(z - shift, turn)
-            real += more_real
-            imag += more_imag
+            real += free(z - shift, turn)[0]
     strength = panels.weights / (2j * np.pi)
-    smooth = turn[:, None] * (copies.polynomial(z) @ (copies.moments * strength))
-    return real + smooth.real, imag + smooth.imag
+    return real + (turn[:, None] * (copies.polynomial(z) @ (copies.moments * strength))).real
 
 
 def log_sinh(period, away, downstream):

@@ -28,6 +28,7 @@ TURBULENT_LIMIT = 2.4    # shape factor at separation
 AFTER_TRANSITION = 1.4   # shape factor with which a turbulent layer starts (common practice)
 LEAST_TRANSITION = 1e-9  # a length Reynolds number below which Michel's curve is not evaluated
 STEPS = 2                # Runge-Kutta steps between stations
+DIP = 30.0               # displacement thicknesses over which a dip of the speed is passed over
 
 LAMINAR, TURBULENT, ATTACHED = 0, 1, 2  # how a lane ends
 
@@ -81,13 +82,16 @@ def march(arc, speed, slope, viscosity, closing=np.inf):
     viscosity = np.broadcast_to(np.asarray(viscosity, float), lanes)[:, None]
     running = np.logical_and.accumulate(speed[:, 1:] > 0.0, axis=1)
     running = np.concatenate([np.ones((lanes, 1), bool), running], axis=1)
+    count = arc.shape[1]
+    used = slice(running.sum(axis=1).max())
+    arc, speed, slope, running = (a[:, used] for a in (arc, speed, slope, running))
     end = np.take_along_axis(arc, running.sum(axis=1)[:, None] - 1, axis=1)[:, 0]
     speed = np.where(running, speed, 1.0)
     slope = np.where(running, slope, 0.0)
 
     momentum, gradient = thwaites(arc, speed, slope, viscosity)
     displacement = momentum * laminar_shape(gradient)
-    laminar_end = _first(arc, LAMINAR_LIMIT - gradient, running)
+    laminar_end = _laminar_end(arc, speed, gradient, displacement, running)
     transition = _first(arc, _michel(arc, speed, momentum, viscosity), running)
     thick = _at(arc, speed * displacement, np.minimum(laminar_end, end)) / viscosity[:, 0]
     bubble = (laminar_end <= transition) & (laminar_end < end) & (thick > closing)
@@ -112,6 +116,10 @@ def march(arc, speed, slope, viscosity, closing=np.inf):
     state[attached] = ATTACHED
     gone = (arc > separation[:, None]) | ~running
     momentum[gone] = displacement[gone] = np.nan
+    room = [(0, 0), (0, count - arc.shape[1])]
+    momentum, displacement = (
+        np.pad(a, room, constant_values=np.nan) for a in (momentum, displacement)
+    )
     return Layers(
         separation, state, np.where(turbulent, turns, np.nan), bubble, momentum, displacement
     )
@@ -120,14 +128,14 @@ def march(arc, speed, slope, viscosity, closing=np.inf):
 def thwaites(arc, speed, slope, viscosity):
     """Momentum thickness and lambda of laminar layers, (lanes, stations) each.
 
-    Between stations U is the cubic of their speeds and slopes; eight Gauss points integrate its
-    fifth power exactly.
+    Between stations U is the cubic of their speeds and slopes, and five Gauss points integrate its
+    fifth power: exactly where U is linear, as at the stagnation point.
     """
     steps = np.diff(arc, axis=1)
-    x, shares = np.polynomial.legendre.leggauss(8)
+    x, shares = np.polynomial.legendre.leggauss(5)
     total = np.zeros(steps.shape)
     for t, share in zip(0.5 * (x + 1.0), 0.5 * shares, strict=True):
-        total += share * _cubic(speed, slope, steps, t) ** 5
+        total += share * np.maximum(_cubic(speed, slope, steps, t), 0.0) ** 5
     total = np.cumsum(total * steps, axis=1)
     with np.errstate(divide="ignore", invalid="ignore"):
         square = 0.45 * viscosity * total / speed[:, 1:] ** 6
@@ -150,6 +158,25 @@ def laminar_shape(gradient):
 def friction(momentum_reynolds, shape):
     """Friction coefficient of a turbulent layer: Ludwieg and Tillmann."""
     return 0.246 * 10.0 ** (-0.678 * shape) * momentum_reynolds**-0.268
+
+
+def _laminar_end(arc, speed, gradient, displacement, running):
+    """(lanes,) where laminar layers separate for good, or infinity.
+
+    At a jump of curvature the slope of the speed is infinite over no length at all; a layer passes
+    over it, as over any dip of the speed that is made good within a few of its thicknesses.
+    """
+    excess = LAMINAR_LIMIT - gradient
+    while True:
+        place = _first(arc, excess, running)
+        at = np.minimum(place, arc[:, -1])
+        window = place + DIP * _at(arc, displacement, at)
+        ahead = (arc > place[:, None]) & (arc < window[:, None]) & running
+        regained = ahead & (speed >= _at(arc, speed, at)[:, None])
+        passed = np.where(regained.any(axis=1), np.argmax(regained, axis=1), 0)
+        if not passed.any():
+            return place
+        excess[np.arange(arc.shape[1]) <= passed[:, None]] = -1.0
 
 
 def _michel(arc, speed, momentum, viscosity):
@@ -227,6 +254,7 @@ def _head(arc, speed, slope, viscosity, turns, start, end):
     """
     theta, shape = np.full(arc.shape, np.nan), np.full(arc.shape, np.nan)
     stop = np.full(len(arc), np.inf)
+    least = 1e-3 * start  # keeps a layer that a steep rise of the speed squeezes from vanishing
     state = np.stack([start, start * entrainment_shape(np.full(len(arc), AFTER_TRANSITION))])
     for k in range(int((arc <= turns[:, None]).sum(axis=1).min()) - 1, arc.shape[1] - 1):
         here, there = np.maximum(arc[:, k], turns), arc[:, k + 1]
@@ -242,11 +270,11 @@ def _head(arc, speed, slope, viscosity, turns, start, end):
                                low + along)
 
             a = rate(state, 0.0)
-            b = rate(state + 0.5 * step * a, 0.5 * step)
-            c = rate(state + 0.5 * step * b, 0.5 * step)
-            d = rate(state + step * c, step)
+            b = rate(np.maximum(state + 0.5 * step * a, least), 0.5 * step)
+            c = rate(np.maximum(state + 0.5 * step * b, least), 0.5 * step)
+            d = rate(np.maximum(state + step * c, least), step)
             state = state + step * (a + 2.0 * b + 2.0 * c + d) / 6.0
-            state = np.maximum(state, 1e-300)
+            state = np.maximum(state, least)
             after = _shape(state[1] / state[0])
             left = marching & np.isinf(stop) & (after > TURBULENT_LIMIT)
             share = (TURBULENT_LIMIT - before) / np.where(left, after - before, 1.0)
@@ -262,7 +290,7 @@ def _growth(state, arc, speed, slope, viscosity, place):
     t = (place[:, None] - arc[:, :1]) / steps
     edge = np.maximum(_cubic(speed, slope, steps, t), 1e-12)[:, 0]
     relative = ((1.0 - t) * slope[:, :1] + t * slope[:, 1:])[:, 0] / edge
-    theta = np.maximum(state[0], 1e-300)
+    theta = state[0]
     entrained = np.maximum(state[1] / theta, 3.3 + 1e-6)
     shape = _shape(entrained)
     thickening = 0.5 * friction(edge * theta / viscosity, shape) - (shape + 2.0) * theta * relative

@@ -1,36 +1,41 @@
 """The solved flow about a set of bodies, and everything that can be asked of it.
 
-The tangential velocity just inside every wall is zero. With walls counter-clockwise, W = g conj(T)
-on the wall, g = gamma + i v and the known outward normal velocity v:
-
-    Re(T W_onset) + (tangential influence) gamma + (that of the sources) v - gamma = 0,
-
-the influence being the outer limit, gamma the jump. On each body the mean of gamma is added to the
-rows, which fixes the circulation that this equation leaves free. Rows and columns are scaled by the
-square roots of the arc-length weights. One LU factorisation serves the two unit onset directions,
-unit circulation of each body that has any, and the wake of every direction.
+One factorisation of the equation on the walls serves the two unit onset directions, unit circulation
+of each body that has any, and the wake of every direction; the flow for a direction is a linear
+combination of them.
 """
 
+import warnings
 from collections.abc import Sequence
+from copy import copy
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.polynomial import legendre
-from scipy.linalg import lu_factor, lu_solve
 from scipy.optimize import brentq
 
 from offbody import flow
+from offbody.accuracy import (
+    ATTEMPTS,
+    LEAST_FLOOR,
+    MOST_NODES,
+    NEAR_EDGE,
+    SHRINKING,
+    Tolerance,
+)
 from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
-from offbody.errors import InputError
+from offbody.equation import BY_MATRIX, Equation
+from offbody.errors import AccuracyWarning, InputError
 from offbody.outlines import Outline
-from offbody.panels import lay, to_modes
+from offbody.laying import lay, measure
+from offbody.panels import assemble, to_modes
 from offbody.surroundings import KINDS, OpenStream, holds
 from offbody.tracing import trace
-from offbody.wakes import Wake, profile
+from offbody.wakes import Lee, Wake, blown_speeds, settle
 
 DEFAULT_ORDER = 16
 ALONG_ROW = 1e-11  # the cosine of an angle that is 90 degrees
-BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way
 
 
 def solve(outlines, surroundings=None, panels=None, order=None, circulation=None, wakes=None):
@@ -42,12 +47,14 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
         The bodies, clear of one another.
     surroundings : OpenStream, Ground, Duct or Row, optional
         What stands round them; an open stream unless given.
-    panels : int or sequence, optional
+    panels : int, sequence or Tolerance, optional
         Panels per body (one number for each, or one for all; None within a sequence lets the
-        program choose). None: laid by curvature, edges, and distance to other walls.
+        program choose), or an ``ob.Tolerance`` that they are to be split to. None: laid by
+        curvature, edges, and distance to other walls.
     order : int, optional
         Nodes and terms per panel, 1 (straight, constant strength) to 16. None: 16, which
-        ``bench/formulations.py`` finds to be the quickest way to each accuracy.
+        ``bench/formulations.py`` finds the quickest to an error of 1e-9, level with 12 at 1e-6, and
+        within a third of the quickest at 1e-3.
     circulation : float or sequence, optional
         Per body, counter-clockwise positive, for unit onset speed. None: the Kutta condition where
         the body has a sharp edge, else zero.
@@ -61,7 +68,12 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
     Raises
     ------
     InputError
-        If bodies overlap, touch or reach below the ground, or an argument does not fit.
+        If bodies overlap, touch or reach beyond a wall, or an argument does not fit.
+
+    Warns
+    -----
+    AccuracyWarning
+        If a tolerance could not be met; the message says what was reached.
 
     References
     ----------
@@ -83,19 +95,57 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
             "ob.Duct(lower, upper) or ob.Row(pitch)"
         )
     order = DEFAULT_ORDER if order is None else as_count("order", order, least=1, greatest=16)
+    tolerance = panels if isinstance(panels, Tolerance) else None
     counts = [
         None if count is None else as_count("panels", count, least=2)
-        for count in _per_body("panels", panels, len(bodies))
+        for count in _per_body("panels", None if tolerance else panels, len(bodies))
     ]
     circulations = [
         None if given is None else as_number("circulation", given)
         for given in _per_body("circulation", circulation, len(bodies))
     ]
-    wakes = _per_body("wakes", wakes, len(bodies))
-    for wake in wakes:
-        if wake is not None and not isinstance(wake, Wake):
-            raise InputError(f"wakes must hold ob.Wake(...) or None, got {wake!r}")
-    return Model(bodies, surroundings, counts, order, circulations, wakes)
+    wakes = _as_wakes(wakes, len(bodies))
+    walls, gaps = measure(bodies, surroundings)
+    given = (surroundings, order, circulations, wakes)
+    if tolerance is None:
+        return Model(walls, lay(walls, gaps, counts), *given)
+    return _refined(walls, gaps, tolerance.surface_speed, given)
+
+
+def _refined(walls, gaps, tolerance, given):
+    """A model whose estimated error of surface speed is below the tolerance.
+
+    Near a break the error falls as the least panel does, elsewhere with a high power of the panels'
+    length.
+    """
+    coarseness, floor = 1.0 + 0.2 * max(0.0, np.log10(tolerance) + 9.0), 1.0
+    best = None
+    for attempt in range(1, ATTEMPTS + 1):
+        model = Model(walls, lay(walls, gaps, [None] * len(walls), coarseness, floor), *given)
+        model.solves = attempt
+        if model.estimated_error <= tolerance:
+            return model
+        if best is None or model.estimated_error < best.estimated_error:
+            best = model
+        elif model.estimated_error > 2.0 * best.estimated_error:
+            break  # rounding has taken over
+        at_breaks, elsewhere = model._let_through()
+        if at_breaks > 0.3 * tolerance and floor > LEAST_FLOOR:
+            floor = max(LEAST_FLOOR, floor * np.clip(0.2 * tolerance / at_breaks, 1e-4, 0.5))
+        else:
+            elsewhere = max(elsewhere, at_breaks)
+        if elsewhere > 0.3 * tolerance or at_breaks <= 0.3 * tolerance:
+            power = 1.0 / (0.75 * model.order)
+            coarseness *= np.clip((0.2 * tolerance / elsewhere) ** power, 0.5, 0.9)
+        if model.node_count > MOST_NODES:
+            break
+    warnings.warn(
+        f"Tolerance({tolerance:g}) was not met: the estimated error of surface speed is "
+        f"{best.estimated_error:.2g} with {best.node_count} nodes; ask for a larger tolerance, "
+        "or smooth the outline where it is rough",
+        AccuracyWarning, stacklevel=3,
+    )
+    return best
 
 
 def inside(bodies, points):
@@ -127,7 +177,9 @@ def inside(bodies, points):
         laid = bodies._panels
     else:
         outlines = _as_outlines(bodies)
-        laid, _ = lay(outlines, OpenStream(), [None] * len(outlines), DEFAULT_ORDER)
+        walls, gaps = measure(outlines, OpenStream())
+        ends = lay(walls, gaps, [None] * len(walls))
+        laid = assemble(walls, ends, DEFAULT_ORDER, OpenStream())
     found = flow.enclosing_body(laid, _complex(points).ravel()) >= 0
     return found.reshape(points.shape[:-1]) if points.ndim > 1 else bool(found[0])
 
@@ -144,13 +196,40 @@ class SurfaceFlow:
     speed : (n,) or (directions, n) array
         Along the outline, positive counter-clockwise, over the onset speed.
     pressure_coefficient : same shape
-        1 - speed^2; NaN in the lee of a body with a wake, where it means nothing.
+        1 - speed^2; in the lee of a body with a wake the base pressure, NaN where it has none.
+    numerical_error : same shape
+        Estimated error of the speed.
     """
 
     points: np.ndarray
     arc: np.ndarray
     speed: np.ndarray
     pressure_coefficient: np.ndarray
+    numerical_error: np.ndarray
+
+
+@dataclass(frozen=True)
+class WakeFlow:
+    """The wake of one body as the flow has it, with a leading axis for a vector of directions.
+
+    Attributes
+    ----------
+    drag_coefficient : float or (directions,) array
+        By the wake's reference length, or the breadth across the stream: given, or found from the
+        base pressure.
+    base_pressure : float or (directions,) array
+        Pressure coefficient of the lee: given, or found from the drag; NaN for a wake which only
+        displaces the stream.
+    points : (2, 2) or (directions, 2, 2) array
+        Where the flow leaves the wall, left and right of the stream.
+    arc_fractions : (2,) or (directions, 2) array
+        The same as fractions of the wall, as ``ob.WallPort`` counts them.
+    """
+
+    drag_coefficient: object
+    base_pressure: object
+    points: np.ndarray
+    arc_fractions: np.ndarray
 
 
 class Model:
@@ -165,20 +244,18 @@ class Model:
     wakes : tuple of Wake or None
     order, node_count : int
     panel_counts : tuple of int, per body
+    solves : int
+        How many times a tolerance made it refine its panels, and the first.
     """
 
-    def __init__(self, outlines, surroundings, counts, order, circulations, wakes):
-        self.outlines, self.surroundings = tuple(outlines), surroundings
-        self.order, self.wakes = order, tuple(wakes)
-        self._panels, self._arcs = lay(outlines, surroundings, counts, order)
-        self._lengths = [wall.length for wall in self._arcs]
-        if order == 1:
-            self._lengths = [
-                self._panels.weights[self._panels.node_slice(b)].sum()
-                for b in range(len(outlines))
-            ]
-        self._prescribed = tuple(circulations)
-        self._factorise()
+    def __init__(self, walls, ends, surroundings, order, circulations, wakes):
+        self.outlines = tuple(wall.outline for wall in walls)
+        self.surroundings, self.order, self.wakes = surroundings, order, tuple(wakes)
+        self.solves = 1
+        self._arcs = walls
+        self._panels = assemble(walls, ends, order, surroundings)
+        self._prescribed, self._settled = tuple(circulations), {}
+        self._solve()
 
     @property
     def node_count(self):
@@ -204,49 +281,17 @@ class Model:
 
     # --- the equation -----------------------------------------------------------------------
 
-    def _factorise(self):
+    def _solve(self):
         panels = self._panels
-        tangential, source = flow.wall_influence(panels, self.surroundings)
-        self._source_tangential = source if any(self.wakes) else None
-        tangential[np.diag_indices_from(tangential)] -= 1.0
-        for body, length in enumerate(self._lengths):
-            part = panels.node_slice(body)
-            tangential[part] -= self._mean(tangential, body)
-            tangential[part, part] -= panels.weights[part] / length
-        self._root = np.sqrt(panels.weights)
-        self._factors = lu_factor(
-            tangential * (self._root[:, None] / self._root), overwrite_a=True, check_finite=False
-        )
-        self._unit = self._unknown(-_pairs(panels.tangents).T)
-        free = [
+        self._equation = Equation(panels, self.surroundings)
+        self._unit = self._equation.vortices(_pairs(panels.tangents).T)
+        self._turning = [
             body for body, given in enumerate(self._prescribed)
             if given not in (None, 0.0) or (given is None and self._has_edge(body))
         ]
-        self._turning = free
-        self._spin = np.zeros((len(free), self.node_count))
-        if free:
-            circulation = np.eye(panels.bodies)[free]
-            self._spin = self._unknown(np.zeros_like(self._spin), circulation)
-
-    def _mean(self, rows, body):
-        """Mean over a body's wall, by arc length, of (N, ...) rows.
-
-        There is no circulation inside a body: this mean of the equation is zero but for the error
-        of the panels. Without that error the circulation is what the right-hand side says, exactly.
-        """
-        part = self._panels.node_slice(body)
-        return self._panels.weights[part] @ rows[part] / self._lengths[body]
-
-    def _unknown(self, onset_part, circulation=None):
-        """gamma (R, N) for right-hand sides (R, N), and circulations (R, bodies) or none."""
-        right = onset_part.T.copy()
-        for body, length in enumerate(self._lengths):
-            part = self._panels.node_slice(body)
-            right[part] -= self._mean(right, body)
-            if circulation is not None:
-                right[part] -= circulation[:, body] / length
-        scaled = right * self._root[:, None]
-        return lu_solve(self._factors, scaled, check_finite=False).T / self._root
+        circulation = np.eye(panels.bodies)[self._turning]
+        still = np.zeros((len(circulation), self.node_count))
+        self._spin = self._equation.vortices(still, circulation) if self._turning else still
 
     def _has_edge(self, body):
         return self.outlines[body].edge is not None
@@ -268,17 +313,117 @@ class Model:
         which images that move the stream far upstream (see _shift) leave it as it was given.
         """
         if any(self.wakes):
-            blown = self._wall_normal_speeds(directions)
-            moved = self._unknown(-(blown @ self._source_tangential.T))
-            onset, circulations = self._onset(directions, blown @ self._panels.weights, moved)
-            gamma = onset @ self._unit + moved + circulations @ self._spin
-            return gamma + 1j * blown, None, onset @ [1.0, -1j]
+            strengths, onset = self._pushed(directions, self._wall_normal_speeds(directions))
+            return strengths, None, onset @ [1.0, -1j]
         onset, circulations = self._onset(directions, np.zeros(len(directions)), None)
         rows = np.concatenate([self._unit, self._spin])
         combination = np.concatenate([onset, circulations], axis=1)
         if len(directions) < len(rows):
             return combination @ rows, None, onset @ [1.0, -1j]
         return rows, combination, onset @ [1.0, -1j]
+
+    def _pushed(self, directions, blown):
+        """(directions, N) strengths with normal speeds blown through walls; the onset there."""
+        moved = self._equation.response(blown)
+        gamma, onset = self._wall_flow(directions, blown @ self._panels.weights, moved.real)
+        return gamma + 1j * blown, onset
+
+    def _wall_flow(self, directions, flux, moved):
+        """(directions, N) gamma where sources of a flux (directions,) move it; the onset there."""
+        onset, circulations = self._onset(directions, flux, moved)
+        return onset @ self._unit + moved + circulations @ self._spin, onset
+
+    @cached_property
+    def _unit_errors(self):
+        """(R, N) strengths of the error's field, for the rows of a model without wakes."""
+        onset = np.zeros(len(self._unit) + len(self._spin), complex)
+        onset[:2] = 1.0, -1j
+        return self._errors(np.concatenate([self._unit, self._spin]), onset)
+
+    def _errors(self, strengths, onset):
+        """Strengths (R, N) of the flow that the walls let through, but should not.
+
+        See offbody.accuracy. A sharp edge's Kutta condition holds for the error as well.
+        """
+        through = self._panels.tangents * onset[:, None] + self._equation.wall_velocity(strengths)
+        errors = self._equation.response(through.imag - strengths.imag)
+        spin = self._kutta(self._spin)
+        edges = [k for k, body in enumerate(self._turning) if self._prescribed[body] is None]
+        if edges:
+            turned = -np.linalg.solve(spin[edges].T, self._kutta(errors.real).T).T
+            errors = errors + turned @ self._spin[edges]
+        return errors
+
+    def _error_state(self, directions):
+        """Rows (R, N) and combination, as _state, of the error's field."""
+        rows, combination, onset = self._state(directions)
+        if any(self.wakes):
+            return self._errors(rows, onset), None
+        if combination is None:
+            # as few rows as directions: the combination is that of the unit flows all the same
+            components, circulations = self._onset(directions, np.zeros(len(directions)), None)
+            combination = np.concatenate([components, circulations], axis=1)
+            return combination @ self._unit_errors, None
+        return self._unit_errors, combination
+
+    def _wall_errors(self, directions, part=np.real):
+        """(directions, N) estimated error of surface speed, or what the walls let through."""
+        rows, combination = self._error_state(directions)
+        return np.abs(part(rows if combination is None else combination @ rows))
+
+    def _typical_directions(self):
+        return np.array([0.0] if self.surroundings.walls else [0.0, 60.0, 120.0])
+
+    def _let_through(self):
+        """Greatest leftover of normal speed where panels shrink toward breaks, and elsewhere."""
+        through = self._wall_errors(self._typical_directions(), np.imag).max(axis=0)
+        near = self._near_breaks(SHRINKING)
+        through[self._near_breaks(NEAR_EDGE, edges_only=True)] = 0.0
+        return through[near].max(initial=0.0), through[~near].max(initial=0.0)
+
+    def _near_breaks(self, share, edges_only=False):
+        """(N,) nodes nearer to a break (or only: a sharp edge) than a share of the perimeter."""
+        near = np.zeros(self.node_count, bool)
+        for body, wall in enumerate(self._arcs):
+            part = self._panels.node_slice(body)
+            for place in wall.breaks if wall.is_broken else ():
+                if place == wall.edge or not edges_only:
+                    away = np.abs(self._panels.arcs[part] - place)
+                    near[part] |= np.minimum(away, wall.length - away) < share * wall.length
+        return near
+
+    @property
+    def estimated_error(self):
+        """Greatest estimated error of surface speed, over the onset speed, for any direction.
+
+        Within a millionth of the perimeter of a sharp edge it is not counted: the speed itself is
+        not smooth there.
+        """
+        errors = self._wall_errors(self._typical_directions()).max(axis=0)
+        errors[self._near_breaks(NEAR_EDGE, edges_only=True)] = 0.0
+        return float(errors.max())
+
+    def numerical_error(self, points, direction=0.0):
+        """(...,) estimated error of the velocity at points (..., 2); NaN inside a body.
+
+        The size of the error's own field (see ``offbody.accuracy``), which falls off the wall as
+        the error does; rounding, about 1e-14 of the greatest speed, is not in it.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.circle(2.0), panels=10, order=8)
+        >>> far, near = model.numerical_error([(-3.0, 0.0), (-1.01, 0.0)])
+        >>> bool(1e-10 < far < near < 1e-4)
+        True
+        """
+        points, directions = as_points("points", points), self._directions(direction)
+        z, flat = _complex(points).ravel(), np.atleast_1d(directions)
+        rows, combination = self._error_state(flat)
+        evaluate = flow.velocity if len(rows) < BY_MATRIX else flow.velocity_by_matrix
+        fields = evaluate(self._panels, self.surroundings, rows, z)
+        total = self._masked(fields if combination is None else combination @ fields, z)
+        return _shaped(np.abs(total).reshape((len(flat),) + points.shape[:-1]), directions)
 
     def _onset(self, directions, flux, moved):
         """(directions, 2) onset and (directions, turning bodies) circulations.
@@ -339,23 +484,19 @@ class Model:
 
     def _wall_normal_speeds(self, directions):
         """(directions, N) outward normal speed on the walls."""
-        blown = np.zeros((len(directions), self.node_count))
-        for body, wake in enumerate(self.wakes):
-            if wake is None:
-                continue
-            part = self._panels.node_slice(body)
-            start, length = self._lee(body, directions)
-            fraction = (self._panels.arcs[part] - start[:, None]) % self._arcs[body].length
-            shape = profile(fraction, 0.0, length[:, None])
-            flux = (shape * self._panels.weights[part]).sum(axis=1)
-            blown[:, part] = shape * (0.5 * self._drag(body, directions) / flux)[:, None]
-        return blown
+        if not any(self.wakes):
+            return np.zeros((len(directions), self.node_count))
+        return blown_speeds(self, self._lees(directions))
 
-    def _drag(self, body, directions):
-        """Drag per unit dynamic pressure and span, a length, of one body with a wake."""
-        wake = self.wakes[body]
-        reference = wake.reference or self._breadths(body, directions)
-        return wake.drag(directions) * reference
+    def _lees(self, directions):
+        """{body: Lee} of every wake, settled once for each direction and then kept."""
+        new = np.unique([one for one in directions if one not in self._settled])
+        if len(new):
+            found = settle(self, new)
+            for row, one in enumerate(new.tolist()):
+                self._settled[one] = {b: lee.at([row]) for b, lee in found.items()}
+        kept = [self._settled[one] for one in directions.tolist()]
+        return {b: Lee.joined([lees[b] for lees in kept]) for b in kept[0]}
 
     # --- places on the walls ----------------------------------------------------------------
 
@@ -407,8 +548,8 @@ class Model:
         return (middle + half * x) % total
 
     def _lee(self, body, directions):
-        """Start (counter-clockwise) and length of the lee wall, between the widest points."""
-        left, right = self._widest_arcs(body, directions).T
+        """Start (counter-clockwise) and length of the lee wall of a body with a wake."""
+        left, right = self._lees(directions)[body].arcs.T
         return right, (left - right) % self._arcs[body].length
 
     def _breadths(self, body, directions):
@@ -590,11 +731,12 @@ class Model:
         if self.wakes[body] is not None:
             start, length = self._lee(body, flat)
             within = (self._panels.arcs[part] - start[:, None]) % total
-            pressure[within < length[:, None]] = np.nan
+            base = self._lees(flat)[body].base_pressure
+            pressure = np.where(within < length[:, None], base[:, None], pressure)
         arc = (self._panels.arcs[part] - self._arcs[body].start) % total
         return SurfaceFlow(
             _pairs(self._panels.nodes[part]), arc, _shaped(speed, directions),
-            _shaped(pressure, directions),
+            _shaped(pressure, directions), _shaped(self._wall_errors(flat)[:, part], directions),
         )
 
     def _wall_speeds(self, directions):
@@ -611,7 +753,8 @@ class Model:
     def port_pressure(self, body, arc_fraction, direction=0.0):
         """Pressure coefficient on a wall at a fraction of its arc, from the outline's first point.
 
-        Counter-clockwise, 0 to 1. NaN in the lee of a body with a wake.
+        Counter-clockwise, 0 to 1. In the lee of a body with a wake the base pressure, NaN where the
+        wake has none.
 
         Examples
         --------
@@ -628,7 +771,8 @@ class Model:
         pressure = 1.0 - speed**2
         if self.wakes[body] is not None:
             start, length = self._lee(body, flat)
-            pressure[(arc - start) % total < length] = np.nan
+            base = self._lees(flat)[body].base_pressure
+            pressure = np.where((arc - start) % total < length, base, pressure)
         return _shaped(pressure, directions)
 
     def circulation(self, direction=0.0):
@@ -642,8 +786,8 @@ class Model:
         """(bodies, 2) force per unit dynamic pressure and unit span, a length.
 
         The integral of the pressure (Blasius). For a body with a wake that would be a thrust and
-        means nothing: its component along the stream is then the stated drag, and only the one
-        across it that of the potential flow.
+        means nothing: its component along the stream is then the wake's drag. The one across it is
+        that of the pressure, the base pressure in the lee; of the potential flow if there is none.
 
         Examples
         --------
@@ -660,10 +804,59 @@ class Model:
         force = (1j * np.add.reduceat(moment, first, axis=1)).conj()
         for body, wake in enumerate(self.wakes):
             if wake is not None:
-                stream = np.exp(1j * np.radians(flat))
+                stream, lee = np.exp(1j * np.radians(flat)), self._lees(flat)[body]
+                if wake.has_base:
+                    pressure = self.surface(body, flat).pressure_coefficient
+                    normal = -1j * self._panels.tangents[self._panels.node_slice(body)]
+                    shares = self._panels.weights[self._panels.node_slice(body)]
+                    force[:, body] = -pressure @ (normal * shares)
                 across = (force[:, body] / stream).imag
-                force[:, body] = stream * (self._drag(body, flat) + 1j * across)
+                force[:, body] = stream * (2.0 * lee.flux.sum(axis=1) + 1j * across)
         return _shaped(_pairs(force), directions)
+
+    def wake(self, body, direction=0.0):
+        """WakeFlow of one body: its drag, base pressure and the points where the flow leaves.
+
+        Raises
+        ------
+        InputError
+            If the body has no wake.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> tube = ob.solve(ob.circle(1.0), wakes=ob.Wake(1.2, separation=80.0))
+        >>> round(float(tube.wake(0).base_pressure), 2)
+        -1.18
+        """
+        body, directions = self._body(body), self._directions(direction)
+        wake, flat = self.wakes[body], np.atleast_1d(directions)
+        if wake is None:
+            raise InputError(
+                f"body = {body} ({self.outlines[body].name}) has no wake: give ob.solve wakes=..."
+            )
+        lee = self._lees(flat)[body]
+        drag, wall = 2.0 * lee.flux.sum(axis=1), self._arcs[body]
+        return WakeFlow(
+            _shaped(drag / (wake.reference or self._breadths(body, flat)), directions),
+            _shaped(lee.base_pressure, directions),
+            _shaped(_pairs(self._place(body, lee.arcs)), directions),
+            _shaped((lee.arcs - wall.start) / wall.length % 1.0, directions),
+        )
+
+    def with_wakes(self, wakes):
+        """The same Model with other wakes, as ``solve`` takes them; nothing is solved anew.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.circle(1.0))
+        >>> round(float(model.with_wakes(ob.Wake(1.2)).velocity((-200.0, 0.0))[0]), 6)
+        0.999519
+        """
+        other = copy(self)
+        other.wakes, other._settled = _as_wakes(wakes, len(self.outlines)), {}
+        return other
 
     def stagnation_points(self, body, direction=0.0):
         """(k, 2) points of a wall where the speed changes sign; a list of them for a vector.
@@ -782,6 +975,14 @@ def _as_outlines(outlines):
         if not isinstance(body, Outline):
             raise InputError(f"outlines[{k}] must be an outline such as ob.circle(...), got {body!r}")
     return tuple(bodies)
+
+
+def _as_wakes(given, bodies):
+    wakes = tuple(_per_body("wakes", given, bodies))
+    for wake in wakes:
+        if wake is not None and not isinstance(wake, Wake):
+            raise InputError(f"wakes must hold ob.Wake(...) or None, got {wake!r}")
+    return wakes
 
 
 def _per_body(name, given, bodies):

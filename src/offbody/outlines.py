@@ -513,8 +513,8 @@ def outline(points, sharp=None):
     Returns
     -------
     Outline
-        A spline of degree five (three through fewer than 20 points with an edge), its parameter
-        close to arc length. Its first point is the first of `points`.
+        A spline of degree five, its parameter close to arc length, and its first point the first
+        of `points`. With an edge and fewer than 20 points it is of degree three.
 
     Raises
     ------
@@ -728,7 +728,7 @@ def _closed_samples(shape, kind):
     """Points round the curve, once it is known that they are finite and that it closes."""
     s = np.append(np.arange(1024) / 1024, 1.0 - 2.0**-53)
     z = shape.position(s)
-    _refuse_infinite(z, s, kind)
+    _refuse_infinite(shape, z, s, kind)
     if _size(z) < 1e-300:
         raise InputError(f"{kind} has no length: all its points are {_place(z[0])}")
     if abs(z[-1] - z[0]) > _gap(z):
@@ -739,10 +739,10 @@ def _closed_samples(shape, kind):
     return z[:-1]
 
 
-def _refuse_infinite(z, s, kind):
+def _refuse_infinite(shape, z, s, kind):
     if not np.isfinite(z).all():
-        first = s[~np.isfinite(z)][0]
-        raise InputError(f"{kind} is not finite at s = {first:.9g}; function must be, everywhere")
+        shown = _shown_parameter(shape, s[~np.isfinite(z)][0])
+        raise InputError(f"{kind} is not finite at s = {shown}; function must be, everywhere")
 
 
 def _resolved(shape, edge, kind):
@@ -811,7 +811,7 @@ def _fit(shape, left, right, kind):
     x = CHEBYSHEV_POINTS
     s = _wrapped(0.5 * (left[:, None] * (1 - x) + right[:, None] * (1 + x)))
     z = shape.position(s)
-    _refuse_infinite(z, s, kind)
+    _refuse_infinite(shape, z, s, kind)
     return z @ TO_COEFFICIENTS
 
 
@@ -1358,9 +1358,10 @@ def _refuse_smooth_edge(result, argument):
     """Refuse an edge at which the outline is smooth or re-entrant."""
     if result.edge is None:
         return
-    step = 1e-4
-    before, at, after = result.position(result.edge + np.array([-step, 0.0, step]))
-    turn = math.degrees(np.angle((after - at) / (at - before)))
+    step = np.array([1e-4, 5e-5])
+    before, at, after = result.position(result.edge + np.stack([-step, 0 * step, step]))
+    wide, close = (after - at) / (at - before)
+    at, turn = at[0], math.degrees(np.angle(close * close / wide))  # extrapolated to no step
     if CORNER - 180 < turn < CORNER:
         bent = "is smooth there" if turn > -CORNER else "is re-entrant there"
         raise InputError(
@@ -1371,6 +1372,8 @@ def _refuse_smooth_edge(result, argument):
 
 # --- crossing -------------------------------------------------------------------------------------
 
+NEIGHBOURS = 1e-4     # of the perimeter: parts of a wall so near along it may lie close together
+
 # Chords between samples are enclosed in boxes, boxes of neighbours in larger boxes, and so on up;
 # from the top down only pairs of boxes that overlap are opened. Chords that meet start Newton's
 # method on the curve itself, which tells a crossing from a narrow place.
@@ -1380,23 +1383,24 @@ def _refuse_crossing(result, s):
     """Refuse an outline that crosses or touches itself, sampled at parameters s."""
     s, z, size = _close_samples(result, s)
     first, second = _meeting_chords(z, size)
-    if not len(first):
-        return
-    width = np.append(s[1:], s[0] + 1.0) - s
-    one, other = _nearest_approach(result, s[first], width[first], s[second], width[second])
-    places = result.position(one)
-    arc = _fractions(np.abs(np.roll(z, -1) - z))
     ends = np.append(s, s[0] + 1.0)
-    apart = np.interp((one - s[0]) % 1.0 + s[0], ends, arc)
-    apart -= np.interp((other - s[0]) % 1.0 + s[0], ends, arc)
-    apart = np.abs((apart + 0.5) % 1.0 - 0.5)
-    met = np.abs(places - result.position(other)) < TOUCH * size
-    met &= apart > 1e-5
-    if met.any():
-        raise InputError(
-            f"{result.kind} crosses or touches itself near {_place(places[np.argmax(met)])}; "
-            "give the wall in order, once round"
-        )
+    arc = _fractions(np.abs(np.roll(z, -1) - z))
+    for k in range(0, len(first), 100):
+        one, other = _nearest_approach(result, ends, first[k : k + 100], second[k : k + 100])
+        places = result.position(one)
+        met = np.abs(places - result.position(other)) < TOUCH * size
+        met &= _arc_between(ends, arc, one, other) > NEIGHBOURS
+        if met.any():
+            raise InputError(
+                f"{result.kind} crosses or touches itself near {_place(places[met][0])}; "
+                "give the wall in order, once round"
+            )
+
+
+def _arc_between(ends, arc, one, other):
+    """Length of wall between two parameters, the shorter way round, over the perimeter."""
+    one, other = (np.interp((s - ends[0]) % 1.0 + ends[0], ends, arc) for s in (one, other))
+    return np.abs((one - other + 0.5) % 1.0 - 0.5)
 
 
 def _close_samples(result, s):
@@ -1415,19 +1419,22 @@ def _close_samples(result, s):
     return s, result.position(s), size
 
 
-def _nearest_approach(result, s, width, other_s, other_width):
-    """Parameters near two chords at which the curve meets itself, or comes nearest."""
-    one, other = s + width / 2, other_s + other_width / 2
-    nearest = np.full((3, len(s)), np.inf)
+def _nearest_approach(result, ends, first, second):
+    """Parameters near pairs of chords at which the curve meets itself, or comes near that.
+
+    Newton's method from the middles of the chords, kept within reach of the longer one.
+    """
+    chord = np.stack([first, second])
+    left, right = ends[chord], ends[chord + 1]
+    s, roam = 0.5 * (left + right), (right - left).max(axis=0)
     for _ in range(12):
-        miss = result.position(one) - result.position(other)
-        nearest = np.where(np.abs(miss) < nearest[0], [np.abs(miss), one, other], nearest)
-        a, b = result.derivative(one), -result.derivative(other)
-        matrix = np.stack([np.stack([a.real, b.real], -1), np.stack([a.imag, b.imag], -1)], -2)
-        step = np.linalg.pinv(matrix, rcond=1e-9) @ np.stack([miss.real, miss.imag], -1)[..., None]
-        one = np.clip(one - step[:, 0, 0], s - width, s + 2 * width)
-        other = np.clip(other - step[:, 1, 0], other_s - other_width, other_s + 2 * other_width)
-    return nearest[1], nearest[2]
+        z, slope = result.position(s), result.derivative(s)
+        miss = z[0] - z[1]
+        matrix = np.array([[slope[0].real, -slope[1].real], [slope[0].imag, -slope[1].imag]])
+        inverse = np.linalg.pinv(np.moveaxis(matrix, -1, 0), rcond=1e-9)
+        step = inverse @ np.stack([miss.real, miss.imag], axis=-1)[..., None]
+        s = np.clip(s - step[..., 0].T, left - roam, right + roam)
+    return s
 
 
 def _meeting_chords(z, size):

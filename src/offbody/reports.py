@@ -17,7 +17,7 @@ import numpy as np
 from offbody._version import __version__
 from offbody.bearings import to_bearing
 from offbody.errors import InputError
-from offbody.surroundings import Ground
+from offbody.surroundings import Duct, Ground, Row
 from offbody.surveys import _runs as runs
 
 LIMIT = 0.01  # IEC 61400-12-1: keep the distortion by the mast below 1 percent
@@ -241,14 +241,24 @@ def summary(case, table, cautions=()):
 
 
 def _opening(case, table):
-    kind = "wind bearings (where the wind comes from, clockwise from north)" if (
-        case.by_bearing) else "directions (where the stream goes to, counter-clockwise from +x)"
-    ground = case.surroundings
-    around = f"over the ground y = {ground.y:g}" if isinstance(ground, Ground) else "open stream"
-    speed = f"; undisturbed speed {case.speed:g} {case.speed_unit}" if case.speed else ""
+    if case.by_bearing:
+        kind = "wind bearings (where the wind comes from, clockwise from north)"
+    else:
+        kind = "directions (where the stream goes to, counter-clockwise from +x)"
     yield f"{len(table.angles)} {kind}: {_extent(table.angles)}"
-    yield f"{around}; lengths in {case.length_unit}{speed}; {Path(case.file).name}, offbody " + (
-        __version__)
+    yield f"{_around(case.surroundings)}; lengths in {case.length_unit}{case.speed_in_words('; ')}"
+    yield f"{Path(case.file).name}, offbody {__version__}"
+
+
+def _around(surroundings):
+    match surroundings:
+        case Ground():
+            return f"over the ground y = {surroundings.y:g}"
+        case Duct():
+            return f"in a duct from y = {surroundings.lower:g} to {surroundings.upper:g}"
+        case Row():
+            return f"in a row of pitch {surroundings.pitch:g}"
+    return "open stream"
 
 
 def _extent(angles):

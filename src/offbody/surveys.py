@@ -9,19 +9,20 @@ import numpy as np
 from offbody.arcs import Arcs
 from offbody.bearings import from_bearing, to_bearing, within_turn
 from offbody.checks import as_body, as_directions, as_number
+from offbody.compressibility import LOW_SPEED, as_mach, critical_mach
 from offbody.errors import InputError
 from offbody.sensors import SENSORS, PointSensor
+from offbody.separations import DOUBTFUL, IN_WAKE, separation, wake_codes
 from offbody.surroundings import holds, usual_directions
 
 # Rules of this project, not of the trade: first and cautious guesses.
-LEE_HALF_ANGLE = 10.0  # degrees by which the lee of a bluff body widens on either side
 INCIDENCE_LIMIT = 12.0  # degrees up to which the flow is taken to follow a body with a sharp edge
 FROM_BEHIND = 90.0  # degrees beyond which a sharp edge leads
 SQUARE_TO_PATH = 0.05  # cosine below which a ratio of components along a path says nothing
 WIDEST_STEP = 15.0  # degrees over which a sector goes on: none can step across a lee
 
 
-def survey(model, sensors, directions=None, *, bearings=None):
+def survey(model, sensors, directions=None, *, bearings=None, reynolds=None, mach=None):
     """Table of what every sensor reads in every direction, against the undisturbed stream.
 
     Parameters
@@ -36,6 +37,11 @@ def survey(model, sensors, directions=None, *, bearings=None):
     bearings : array_like of shape (n,), optional
         In place of ``directions``: where the wind comes FROM, degrees clockwise from north. The
         table's direction errors are then clockwise positive, as in a record.
+    reynolds : float or sequence, optional
+        Of the bodies, as ``ob.separation`` takes it: wakes then start where it says, in place of
+        the points widest across the stream or those of the model's own wakes.
+    mach : float, optional
+        Of the undisturbed stream; above 0.3 the notes say what low speed leaves out.
 
     Returns
     -------
@@ -63,7 +69,8 @@ def survey(model, sensors, directions=None, *, bearings=None):
     sensors = _as_sensors(sensors)
     angles, by_bearing = _as_angles(model, directions, bearings)
     samples = _Samples.of(model, sensors)
-    table = Survey(model, sensors, _names(sensors), angles, by_bearing, samples)
+    mach = None if mach is None else as_mach(mach)
+    table = Survey(model, sensors, _names(sensors), angles, by_bearing, samples, reynolds, mach)
     _check_between_walls(table)
     _check_clear_of_bodies(table)
     return table
@@ -116,6 +123,8 @@ class Survey:
     speed_ratio_gradient : (n, k, 2) array
         Change of the speed ratio per unit of length by which the sensor as a whole is misplaced
         in x and in y.
+    in_wake, doubtful : arrays of bool
+        Whether the sensor reaches into the wake of a body, or only into the margin round one.
     trust : array of bool
         False where potential flow is known to fail, by the rules below.
     reason : array of str
@@ -134,12 +143,16 @@ class Survey:
        incidence is the angle between the stream and the line to the edge from the point of the
        wall farthest from it;
     2. to a sensor with a sample point, or a port, in the lee of a body without a sharp edge:
-       downstream of the line that joins the two points of its wall widest across the stream, and
-       within the strip between them, which widens by 10 degrees on either side.
+       downstream of the line that joins the two points where the flow leaves its wall, and within
+       the strip between them, which widens by 10 degrees on either side. They are those of
+       ``ob.separation`` if a Reynolds number is given, else those of its wake (``ob.Wake``), else
+       the points widest across the stream.
 
-    A body with a sharp edge within its incidence has only a thin wake, which is left out. The
-    limits of 12 and 10 degrees are cautious choices of this project. A sensor inside a body has
-    no place in a table: ``ob.survey`` refuses it.
+    A margin of another 10 degrees, from a tenth of the breadth ahead of that line, is trusted and
+    marked doubtful. A body with a sharp edge within its incidence has only a thin wake: left out,
+    or a margin if a Reynolds number is given and the flow stays attached. These limits are
+    cautious choices of this project. A sensor inside a body has no place in a table:
+    ``ob.survey`` refuses it.
 
     Examples
     --------
@@ -155,6 +168,8 @@ class Survey:
     angles: np.ndarray
     by_bearing: bool
     _samples: object
+    _reynolds: object = None
+    _mach: float | None = None
 
     columns: ClassVar[tuple] = (
         ("sensor", "", "Name of the sensor."),
@@ -187,6 +202,8 @@ class Survey:
             "1/length",
             "Change of the speed ratio per unit of length by which the sensor moves along y.",
         ),
+        ("in_wake", "", "True where the sensor reaches into the wake of a body."),
+        ("doubtful", "", "True where it only reaches into the margin round a wake."),
         ("trust", "", "False where potential flow is known to fail."),
         ("reason", "", "Why there is no trust; empty where there is."),
     )
@@ -239,15 +256,23 @@ class Survey:
         return self._where_read("speed", np.stack(changes, axis=-1))
 
     @_column
+    def in_wake(self):
+        return (self._wakes == IN_WAKE).any(axis=0)
+
+    @_column
+    def doubtful(self):
+        return (self._wakes == DOUBTFUL).any(axis=0) & ~self.in_wake
+
+    @_column
     def trust(self):
-        return ~(self._astray.any(axis=0)[:, None] | self._in_lee.any(axis=0))
+        return ~(self._astray.any(axis=0)[:, None] | self.in_wake)
 
     @_column
     def reason(self):
         reasons = np.full(self.trust.shape, "", dtype=object)
         # The last written is the first that applies.
         for body in reversed(range(len(self.model.outlines))):
-            reasons[self._in_lee[body]] = f"in the lee of body {body}"
+            reasons[self._wakes[body] == IN_WAKE] = f"in the lee of body {body}"
         for body in reversed(range(len(self.model.outlines))):
             for row in np.flatnonzero(self._astray[body]):
                 reasons[row] = _astray_reason(body, self._incidence[body, row])
@@ -255,11 +280,12 @@ class Survey:
 
     @cached_property
     def notes(self):
-        return tuple(
+        left_out = (
             self._wake_left_out(body)
             for body, outline in enumerate(self.model.outlines)
             if outline.edge is None and self.model.wakes[body] is None
         )
+        return (*left_out, *self._layers_at_ports(), *self._compressibility())
 
     def sectors(self, limit=0.01):
         """Per sensor, the sectors in which its speed ratio is within a limit of 1 and trusted.
@@ -338,7 +364,8 @@ class Survey:
         """
         names = [name for name, _, _ in self.columns]
         tables = [self.speed_ratio, self.direction_error, self.component_error, self.static_error]
-        tables += [*np.moveaxis(self.speed_ratio_gradient, -1, 0), self.trust, self.reason]
+        tables += [*np.moveaxis(self.speed_ratio_gradient, -1, 0)]
+        tables += [self.in_wake, self.doubtful, self.trust, self.reason]
         angles = zip(self.directions.tolist(), self.bearings.tolist(), strict=True)
         tables = [table.tolist() for table in tables]
         for (direction, bearing), *lines in zip(angles, *tables, strict=True):
@@ -406,20 +433,75 @@ class Survey:
         return self._incidence > INCIDENCE_LIMIT
 
     @cached_property
-    def _in_lee(self):
-        """Where a sensor lies in the lee of each bluff body, (bodies, n, k)."""
+    def _separation(self):
+        """Where the flow leaves the bodies by the march, or None."""
+        if self._reynolds is None:
+            return None
+        return separation(self.model, self.directions, self._reynolds)
+
+    @cached_property
+    def _wakes(self):
+        """Whether a sensor lies in the wake of each body, or in its margin, (bodies, n, k)."""
         samples = self._samples
-        lee = np.zeros((len(self.model.outlines), len(self.directions), len(self.sensors)), bool)
-        for body, outline in enumerate(self.model.outlines):
-            if outline.edge is None:
-                widest = _as_complex(self.model.widest(body, self.directions))
-                caught = _is_in_lee(_as_complex(samples.points), widest, self.directions)
-                lee[body] = samples.gather(caught, np.logical_or)
+        codes = np.stack([
+            samples.gather(self._codes(body), np.maximum)
+            for body in range(len(self.model.outlines))
+        ])
         for place, sensor in enumerate(self.sensors):
             if sensor.kind == "port":
-                # Behind the separation that a wake implies there is no pressure to be had.
-                lee[sensor.body, :, place] |= np.isnan(self.static_error[:, place])
-        return lee
+                codes[sensor.body, self._in_lee(sensor), place] = IN_WAKE
+        return codes
+
+    def _codes(self, body):
+        """The same at the sample points, of one body, (n, m)."""
+        points = self._samples.points
+        if self._separation is not None:
+            return self._separation.codes(body, points)
+        if self.model.outlines[body].edge is not None:
+            return np.zeros((len(self.directions), len(points)), int)
+        if self.model.wakes[body] is None:
+            ends = self.model.widest(body, self.directions)
+        else:
+            ends = self.model.wake(body, self.directions).points
+        return wake_codes(points, ends, self.directions)
+
+    def _in_lee(self, port):
+        """Where a port lies behind the separation that the wake of its body implies, (n,)."""
+        if self.model.wakes[port.body] is None:
+            return np.zeros(len(self.directions), bool)
+        left, right = self.model.wake(port.body, self.directions).arc_fractions.T
+        return (port.arc_fraction - right) % 1 < (left - right) % 1
+
+    def _layers_at_ports(self):
+        """Notes on the boundary layer at ports, which potential flow leaves out."""
+        for place, sensor in enumerate(self.sensors):
+            if sensor.kind == "port" and self._separation is not None:
+                layer = self._separation.displacement_thickness(sensor.body, sensor.arc_fraction)
+                layer = layer[self.trust[:, place] & np.isfinite(layer)]
+                if layer.size:
+                    yield (
+                        f"The boundary layer at {self.names[place]} displaces the flow by up to "
+                        f"{layer.max():.2g} (a length) where the port is trusted; its pressure is "
+                        "that of the flow outside the layer, if the layer is thin against the "
+                        "wall's curvature and the port flush."
+                    )
+
+    def _compressibility(self):
+        """The note on a stream too fast to be taken as incompressible."""
+        if self._mach is None or self._mach <= LOW_SPEED:
+            return
+        least = min(
+            np.nanmin(self.model.surface(body, self.directions).pressure_coefficient)
+            for body in range(len(self.model.outlines))
+        )
+        critical = critical_mach(least)
+        yield (
+            f"At Mach number {self._mach:.2g}, above {LOW_SPEED:g}, compressibility is not "
+            "negligible: ob.compressible_pressure corrects pressure coefficients by Karman and "
+            "Tsien's rule or Prandtl and Glauert's. The flow on a wall first turns sonic at "
+            f"{critical:.2g} by the former"
+            + ("; beyond it neither holds." if self._mach > critical else ".")
+        )
 
     def _wake_left_out(self, body):
         """The note on a bluff body without a drag coefficient."""
@@ -591,23 +673,6 @@ def _unit(vectors):
     """Complex vectors divided by their lengths; NaN for none, as at a stagnation point."""
     with np.errstate(invalid="ignore"):
         return vectors / np.abs(vectors)
-
-
-def _is_in_lee(points, widest, directions):
-    """Which points (m,) lie in the lee of a body, (n, m).
-
-    ``widest``, (n, 2), holds for every direction the wall's points farthest to the left and to
-    the right of the stream.
-    """
-    # In the frame of the stream: real parts count downstream, imaginary parts to the left.
-    against = np.exp(-1j * np.radians(directions))[:, None]
-    place = points * against
-    left, right = (widest * against).T[..., None]
-    # Downstream of the line through the widest points; beyond its ends, of the nearer end.
-    share = np.clip((place - right).imag / (left - right).imag, 0, 1)
-    depth = place.real - (right + share * (left - right)).real
-    beside = np.maximum((place - left).imag, (right - place).imag)
-    return (depth > 0) & (beside <= np.tan(np.radians(LEE_HALF_ANGLE)) * depth)
 
 
 def _astray_reason(body, incidence):

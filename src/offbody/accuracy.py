@@ -1,0 +1,49 @@
+"""How wrong a number is: the tolerance that a caller states, and the error that a model estimates.
+
+A solved density makes a flow that is exact but for what crosses the walls: the normal velocity left
+over at the nodes, where only the tangential one just inside was made zero. That leftover, solved for
+as if it were blown through the walls, gives the error's own field, surface speed and all, on and off
+the walls, for two more columns of the same factorisation.
+"""
+
+from dataclasses import dataclass
+
+from offbody.checks import as_number
+
+ATTEMPTS = 12       # solves before a tolerance is given up
+MOST_NODES = 6000   # more are not tried for the sake of a tolerance
+LEAST_FLOOR = 1e-6  # factor on the least panels at breaks, where refining them ends
+SHRINKING = 0.02    # of the perimeter: nearer to a break the panels shrink toward it
+NEAR_EDGE = 1e-6    # of the perimeter: nearer to a sharp edge no tolerance of the speed is promised
+
+
+@dataclass(frozen=True)
+class Tolerance:
+    """The error of surface speed, over the onset speed, that a model is to stay below.
+
+    Given as ``panels`` to ``ob.solve``, it lets panels be split until the estimated error, for any
+    direction, is below it everywhere but within a millionth of the perimeter of a sharp edge.
+
+    Parameters
+    ----------
+    surface_speed : float
+        From 1e-12 to 0.1.
+
+    Raises
+    ------
+    InputError
+        If it is not a number within these limits.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> model = ob.solve(ob.ellipse(4.0, 1.0), panels=ob.Tolerance(1e-6))
+    >>> bool(model.estimated_error < 1e-6)
+    True
+    """
+
+    surface_speed: float
+
+    def __post_init__(self):
+        number = as_number("surface_speed", self.surface_speed, least=1e-12, greatest=0.1)
+        object.__setattr__(self, "surface_speed", number)

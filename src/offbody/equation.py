@@ -1,0 +1,75 @@
+"""The equation on the walls, assembled and factorised once for any number of right-hand sides.
+
+The tangential velocity just inside every wall is zero. With walls counter-clockwise, W = g conj(T)
+on the wall, g = gamma + i v and the known outward normal velocity v:
+
+    (tangential influence) gamma - gamma = -Re(T W_onset) - (tangential influence of the sources) v,
+
+the influence being the outer limit, gamma the jump. It leaves the circulation of each body free:
+the mean of gamma over the body is taken off its rows, and the circulation wanted off the right-hand
+side. Rows and columns are scaled by the square roots of the arc-length weights, which keeps the
+condition number low at edges and in gaps (Bremer, J. Comput. Phys. 231 (2012) 1879-1899).
+"""
+
+from functools import cached_property
+
+import numpy as np
+from scipy.linalg import lu_factor, lu_solve
+
+from offbody import flow
+
+BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way to a field
+
+
+class Equation:
+    """The second-kind equation on the walls of a set of panels."""
+
+    def __init__(self, panels, surroundings):
+        self.panels, self.surroundings = panels, surroundings
+        self._bodies = [panels.node_slice(body) for body in range(panels.bodies)]
+        self._lengths = [panels.weights[part].sum() for part in self._bodies]
+        self._root = np.sqrt(panels.weights)
+        matrix = flow.wall_influence(panels, surroundings)
+        matrix[np.diag_indices_from(matrix)] -= 1.0
+        for part, length in zip(self._bodies, self._lengths, strict=True):
+            matrix[part] -= self._mean(matrix, part, length)
+            matrix[part, part] -= panels.weights[part] / length
+        matrix *= self._root[:, None] / self._root
+        self._factors = lu_factor(matrix, overwrite_a=True, check_finite=False)
+
+    def _mean(self, rows, part, length):
+        """Mean over a body's wall, by arc length, of (N, ...) rows.
+
+        There is no circulation inside a body: this mean of the equation is zero but for the error
+        of the panels. Without that error the circulation is what the right-hand side says, exactly.
+        """
+        return self.panels.weights[part] @ rows[part] / length
+
+    def vortices(self, tangential, circulation=None):
+        """gamma (R, N) that takes off the tangential velocities (R, N) of onset and sources.
+
+        circulation (R, bodies), or none.
+        """
+        right = -tangential.T
+        for body, (part, length) in enumerate(zip(self._bodies, self._lengths, strict=True)):
+            right[part] -= self._mean(right, part, length)
+            if circulation is not None:
+                right[part] -= circulation[:, body] / length
+        scaled = right * self._root[:, None]
+        return lu_solve(self._factors, scaled, check_finite=False).T / self._root
+
+    def response(self, blown):
+        """g = gamma + i v (R, N) of normal velocities v (R, N) on the walls, no circulation."""
+        along = self.wall_velocity(1j * blown).real
+        return self.vortices(along) + 1j * blown
+
+    @cached_property
+    def blowing(self):
+        """(N, N) gamma of a unit normal velocity at each node, no circulation."""
+        return self.response(np.eye(len(self.panels.nodes))).real
+
+    def wall_velocity(self, strengths):
+        """(R, N) tangential + i normal velocity just outside the nodes that strengths induce."""
+        panels = self.panels
+        evaluate = flow.velocity if len(strengths) < BY_MATRIX else flow.velocity_by_matrix
+        return panels.tangents * evaluate(panels, self.surroundings, strengths, panels.nodes)
