@@ -263,6 +263,21 @@ def test_a_reference_length_changes_the_coefficient_and_not_the_flow():
     np.testing.assert_allclose(other.drag_coefficient, 0.6, rtol=1e-12)
 
 
+@pytest.mark.parametrize("body, wake", [
+    (ob.circle(1.0), ob.Wake(0.6, reynolds=1e6)),
+    (ob.circle(1.0), ob.Wake(base_pressure=-0.4, reynolds=1e7)),
+    (ob.ellipse(8.0, 1.0), ob.Wake(0.1, reynolds=SUBCRITICAL)),
+    (ob.ellipse(2.0, 1.0), ob.Wake(0.7, reynolds=SUBCRITICAL)),
+    (ob.ellipse(0.2, 1.0), ob.Wake(1.9, reynolds=SUBCRITICAL)),
+])
+@pytest.mark.filterwarnings("error")
+def test_wakes_of_turbulent_layers_and_of_slender_and_flat_bodies_rest(body, wake):
+    model = ob.solve(body, wakes=wake)
+    found = ob.separation(model)
+    np.testing.assert_allclose(found.points[0], model.wake(0).points, atol=1e-5)
+    assert (found.turning > 45).all(), found.turning
+
+
 def test_wakes_of_several_bodies_rest_together():
     legs = [ob.circle(0.1, centre) for centre in ((-0.58, 0.0), (0.29, 0.5), (0.29, -0.5))]
     model = ob.solve(legs, wakes=ob.Wake(1.2, reynolds=5e4))

@@ -6,8 +6,8 @@ import numpy as np
 from scipy.ndimage import distance_transform_edt
 
 from offbody.reports import LIMIT
+from offbody.separations import WAKE_HALF_ANGLE
 from offbody.surroundings import holds
-from offbody.separations import LEE_HALF_ANGLE
 
 DOTS_PER_INCH = 150
 SENSORS_PER_PICTURE = 8
@@ -137,7 +137,7 @@ def _draw_lee(axes, model, y, spans, direction):
         left, right = model.widest(body, direction)
         corners = [right, left]
         for corner, side in ((left, 1), (right, -1)):
-            along = np.radians(direction + side * LEE_HALF_ANGLE)
+            along = np.radians(direction + side * WAKE_HALF_ANGLE)
             corners.append(corner + far * np.array([np.cos(along), np.sin(along)]))
         for shift in _shifts(model.surroundings, y):
             axes.add_patch(Polygon(

@@ -642,6 +642,17 @@ class Model:
         total = total + onset[:, None]
         return self._masked(total, z) if mask else total
 
+    def _field(self, direction):
+        """The complex velocity u - i v for one direction, as a function of complex points (m,)."""
+        rows, combination, onset = self._state(np.array([direction]))
+        strengths = rows if combination is None else combination @ rows
+
+        def velocity(z):
+            total = flow.velocity(self._panels, self.surroundings, strengths, z) + onset[:, None]
+            return self._masked(total, z)[0]
+
+        return velocity
+
     def _masked(self, values, z):
         nowhere = (flow.enclosing_body(self._panels, self._home(z)) >= 0)
         values[:, nowhere | ~holds(self.surroundings, z)] = np.nan

@@ -12,23 +12,24 @@ REST = 1e-5              # slower than this a line ends
 def trace(model, starts, direction, length, domain, both_ways):
     """A list of (k, 2) arrays, one per start; see Model.streamlines."""
     z = starts[:, 0] + 1j * starts[:, 1]
-    lines = _one_way(model, z, direction, length, domain)
+    velocity = model._field(direction)
+    lines = _one_way(velocity, z, length, domain)
     if both_ways:
-        back = _one_way(model, z, direction, -length, domain)
+        back = _one_way(velocity, z, -length, domain)
         lines = [np.concatenate([b[:0:-1], f]) for b, f in zip(back, lines, strict=True)]
     return [np.stack([line.real, line.imag], axis=-1) for line in lines]
 
 
-def _one_way(model, z, direction, length, domain):
+def _one_way(velocity, z, length, domain):
     """Complex points of each line, from its start to where it ends."""
-    usable = _usable(model, z, direction, domain)
+    usable = _usable(velocity, z, domain)
     pieces = [[z[k : k + 1]] if usable[k] else [z[:0]] for k in range(len(z))]
     live = np.flatnonzero(usable)
     place, run, step = z[live], 0.0, None
     spacing = abs(length) / POINTS_PER_LENGTH
     while len(live) and run < abs(length) * (1 - 1e-12):
         solver = DOP853(
-            _right_hand_side(model, direction, np.sign(length)), run, _apart(place), abs(length),
+            _right_hand_side(velocity, np.sign(length)), run, _apart(place), abs(length),
             rtol=1e-12, atol=ACCURACY * abs(length), max_step=abs(length) / 20, first_step=step,
         )
         ended = np.zeros(len(live), bool)
@@ -38,7 +39,7 @@ def _one_way(model, z, direction, length, domain):
                 ended[:] = True
                 break
             points = _between(solver, spacing)
-            good = _usable(model, points.ravel(), direction, domain).reshape(points.shape)
+            good = _usable(velocity, points.ravel(), domain).reshape(points.shape)
             good = np.logical_and.accumulate(good, axis=0)
             for column, line in enumerate(live):
                 pieces[line].append(points[good[:, column], column])
@@ -50,11 +51,11 @@ def _one_way(model, z, direction, length, domain):
     return [np.concatenate(parts) for parts in pieces]
 
 
-def _right_hand_side(model, direction, sign):
+def _right_hand_side(velocity, sign):
     """Unit velocity, slowed near rest; at rest inside a body, so that a step into one is refused."""
 
     def derivative(_, state):
-        w = np.nan_to_num(model._velocity(_together(state), np.array([direction]))[0])
+        w = np.nan_to_num(velocity(_together(state)))
         return _apart(sign * w.conj() / np.sqrt(w.real**2 + w.imag**2 + SLOW**2))
 
     return derivative
@@ -67,10 +68,9 @@ def _between(solver, spacing):
     return _together(solver.dense_output()(run)).T
 
 
-def _usable(model, z, direction, domain):
+def _usable(velocity, z, domain):
     """Where a line may go on: outside bodies, not at rest, within the domain."""
-    w = model._velocity(z, np.array([direction]))[0]
-    good = np.abs(w) > REST
+    good = np.abs(velocity(z)) > REST
     if domain is not None:
         x0, x1, y0, y1 = domain
         good &= (z.real >= x0) & (z.real <= x1) & (z.imag >= y0) & (z.imag <= y1)
