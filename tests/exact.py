@@ -13,12 +13,13 @@ A counter-clockwise circulation G adds -i G / (2 pi z) to W far away.
 References
 ----------
 L. M. Milne-Thomson, Theoretical Hydrodynamics (circle theorem, images of doublets, Joukowski and
-Karman-Trefftz maps); H. Lamb, Hydrodynamics (ellipse in a stream).
+Karman-Trefftz maps); H. Lamb, Hydrodynamics (ellipse in a stream; rows of vortices and doublets).
 """
 
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cache, cached_property
 
+import mpmath
 import numpy as np
 from scipy.optimize import minimize_scalar
 
@@ -323,6 +324,155 @@ class TwoCircles:
         """Return the signed wall speed of one of the two bodies."""
         circle = self.bodies[body]
         return (self.velocity(circle.wall(s), direction) * circle.tangent(s)).real
+
+
+class _RepeatedCircle(_Body):
+    """A circle and its copies at every period along y, by multipoles, solved in thirty digits.
+
+    With lengths in radii, d = z - centre and G(d) = (pi/P) coth(pi d/P), the row of unit
+    singularities 1/d (Lamb),
+
+        W = V + sum over m of c_m G_m(d) + conj(c_m) G_m(d - s),  G_(m+1) = -G_m'/m,
+
+    the second sum only where walls reflect the circle to centre + s. Round the circle the part of W
+    that is regular within it is sum_k t_k d^k, linear in the c_m, and by the circle theorem
+    c_(k+2) = -conj(t_k). c_1 is the circulation's. G_m is a polynomial in coth(pi d/P), so that
+    W is two of them, exact far up- and downstream.
+    """
+
+    digits = 30
+
+    wall = Circle.wall
+    tangent = Circle.tangent
+
+    def _far_coefficients(self):
+        """g_j: Taylor coefficients of G(d) - 1/d at d = 0, by zeta functions."""
+        period = mpmath.mpf(self._period) / self.radius
+        odd = [2 * (-1) ** (j // 2) * mpmath.zeta(j + 1) / period ** (j + 1) if j % 2 else 0
+               for j in range(2 * self.terms + 1)]
+        return [mpmath.mpc(g) for g in odd]
+
+    def _mirror_coefficients(self):
+        """h_j: Taylor coefficients of G(d - s) at d = 0, by Hurwitz zeta functions."""
+        period = mpmath.mpf(self._period) / self.radius
+        share = mpmath.mpf(-self._reflection) / self._period   # -s = i share period
+        first = -1j * mpmath.pi / period * mpmath.cot(mpmath.pi * share)
+        return [first] + [
+            mpmath.mpc(0, -1) ** (j + 1) * (-1) ** j / period ** (j + 1)
+            * (mpmath.zeta(j + 1, share) + (-1) ** (j + 1) * mpmath.zeta(j + 1, 1 - share))
+            for j in range(1, 2 * self.terms + 1)
+        ]
+
+    def _multipoles(self, direction):
+        """The onset V and c_1, c_2 ... in thirty digits, lengths in radii."""
+        count = self.terms
+        far = self._far_coefficients()
+        mirror = [0] * len(far) if self._reflection is None else self._mirror_coefficients()
+        first = mpmath.mpc(0, -self.circulation / self.radius) / (2 * mpmath.pi)
+        onset = self._onset(direction, first)
+
+        def regular(row, multipole, taylor):
+            power = row + multipole - 1
+            return (-1) ** (multipole - 1) * mpmath.binomial(power, multipole - 1) * taylor[power]
+
+        matrix, right = mpmath.matrix(2 * count), mpmath.matrix(2 * count, 1)
+        for k in range(count):
+            given = regular(k, 1, far) * first + regular(k, 1, mirror) * mpmath.conj(first)
+            given += onset if k == 0 else 0
+            right[k], right[count + k] = given.real, given.imag
+            for j in range(count):   # t_k + A conj(t) + B t = given, as c = -conj(t)
+                a, b = regular(k, j + 2, far), regular(k, j + 2, mirror) + (j == k)
+                matrix[k, j], matrix[k, count + j] = b.real + a.real, a.imag - b.imag
+                matrix[count + k, j], matrix[count + k, count + j] = b.imag + a.imag, b.real - a.real
+        t = mpmath.lu_solve(matrix, right)
+        return onset, [first] + [-mpmath.mpc(t[k], -t[count + k]) for k in range(count)]
+
+    def velocity(self, z, direction=0.0):
+        onset, series = _coth_series(self, direction)
+        d = np.pi * (np.asarray(z, dtype=complex) - self.centre) / self._period
+        total = onset + np.polynomial.polynomial.polyval(_coth(d), series)
+        if self._reflection is not None:
+            mirrored = d - 1j * np.pi * self._reflection / self._period
+            total = total + np.polynomial.polynomial.polyval(_coth(mirrored), series.conj())
+        return total
+
+    def surface_speed(self, s, direction=0.0):
+        return (self.velocity(self.wall(s), direction) * self.tangent(s)).real
+
+
+@cache
+def _coth_series(circle, direction):
+    """V, and the polynomial in coth(pi d/P) that the multipoles of a repeated circle make."""
+    with mpmath.workdps(circle.digits):
+        onset, multipoles = circle._multipoles(direction)
+        shape, total = [mpmath.mpf(0), mpmath.mpf(1)], [mpmath.mpc(0)] * (len(multipoles) + 1)
+        factor = mpmath.pi * circle.radius / circle._period
+        for m, strength in enumerate(multipoles, start=1):
+            for k, size in enumerate(shape):
+                total[k] += strength * factor**m * size
+            slope = [k * size / m for k, size in enumerate(shape)][1:]
+            shape = [mpmath.mpf(0)] * (m + 2)   # (C^2 - 1) times the slope, over m
+            for k, size in enumerate(slope):
+                shape[k] -= size
+                shape[k + 2] += size
+        return complex(onset), np.array([complex(one) for one in total])
+
+
+def _coth(x):
+    """coth of complex x without overflow; of period pi along the imaginary axis."""
+    side = np.where(x.real < 0, -1.0, 1.0)
+    fall = np.exp(-2 * side * x)
+    return side * (1 + fall) / (1 - fall)
+
+
+@dataclass(frozen=True)
+class CircleRow(_RepeatedCircle):
+    """Circles at every pitch along y, each with a circulation; the stream is that far upstream.
+
+    Along the row, at 90 or -90 degrees, there is a far upstream only without circulation.
+    """
+
+    radius: float
+    pitch: float
+    centre: complex = 0.0
+    circulation: float = 0.0
+    terms: int = 32
+
+    _reflection = None
+
+    @property
+    def _period(self):
+        return self.pitch
+
+    def _onset(self, direction, first):
+        # Upstream the row of c_1 adds -c_1 pi/P (for a stream towards +x) to V.
+        side = mpmath.sign(round(mpmath.cos(mpmath.radians(direction)), 12))
+        return mpmath.expj(-mpmath.radians(direction)) + (
+            side * first * mpmath.pi * self.radius / self.pitch
+        )
+
+
+@dataclass(frozen=True)
+class CircleInDuct(_RepeatedCircle):
+    """Circle between the walls y = lower and y = upper; the stream is that far upstream."""
+
+    radius: float
+    lower: float
+    upper: float
+    centre: complex = 0.0
+    circulation: float = 0.0
+    terms: int = 32
+
+    @property
+    def _period(self):
+        return 2 * (self.upper - self.lower)
+
+    @property
+    def _reflection(self):
+        return -2 * (np.imag(self.centre) - self.lower)
+
+    def _onset(self, direction, first):
+        return mpmath.mpc(mpmath.cos(mpmath.radians(direction)))
 
 
 @dataclass(frozen=True)

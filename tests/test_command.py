@@ -58,7 +58,7 @@ def names(folder):
 def test_a_survey_is_tables_pictures_and_a_page_that_is_printed_too(case, tmp_path, capsys):
     assert run("survey", case, "--out", tmp_path / "out") == 0
     assert names(tmp_path / "out") == [
-        "map.png", "sensors.png", "summary.txt", "survey.csv", "survey.json",
+        "map.png", "report.html", "sensors.png", "summary.txt", "survey.csv", "survey.json",
     ]
     printed = capsys.readouterr()
     assert printed.err == ""  # no progress bar where there is no terminal, no warnings
@@ -122,7 +122,9 @@ def test_without_a_drawing_library_the_tables_still_come_and_a_line_says_why(
     case, tmp_path, capsys, without_pictures
 ):
     assert run("survey", case, "--out", tmp_path / "out") == 0
-    assert names(tmp_path / "out") == ["summary.txt", "survey.csv", "survey.json"]
+    assert names(tmp_path / "out") == [
+        "report.html", "summary.txt", "survey.csv", "survey.json",
+    ]
     last = capsys.readouterr().out.splitlines()[-1]
     assert last.startswith("no pictures: ") and "pip install 'offbody[plot]'" in last
 

@@ -552,6 +552,16 @@ def test_the_stream_function_jumps_by_a_wakes_flux_across_a_cut_straight_behind_
     assert_allclose(psi[-1], psi[0], atol=1e-9)
 
 
+def test_the_cut_of_a_wake_starts_at_the_rear_of_an_angle():
+    angle = ob.polygon([(0, 0), (1, 0), (1, 0.3), (0.3, 0.3), (0.3, 1), (0, 1)], corner_radius=0.02)
+    model = ob.solve(angle, wakes=ob.Wake(1.5))
+    across = np.linspace(-2.0, 2.0, 801)
+    points = 4.0 * unit(225.0) + across[:, None] * unit(315.0)
+    steps = np.abs(np.diff(model.stream_function(points, 225.0)) + 0.005)
+    # The corner at the origin is the rear; its arc is a hundredth long.
+    assert abs(across[np.argmax(steps)]) < 0.03, f"{across[np.argmax(steps)]} beside the corner"
+
+
 # --- surface, ports, stagnation -------------------------------------------------------------------
 
 

@@ -146,6 +146,15 @@ def test_lines_end_at_the_domains_edge():
             assert room < 10.0 / PER_LENGTH, f"ends {room} before the edge, at {end}"
 
 
+def test_a_line_that_would_come_back_into_the_domain_ends_where_it_left():
+    model, start = solved("circle"), (-3.0, 0.5)
+    free, = model.streamlines(start, length=6.0)
+    crest = free[:, 1].max()
+    # Over the edge for a quarter of a radius, less than one step of the solver.
+    line, = model.streamlines(start, length=6.0, domain=(-5.0, 5.0, -5.0, crest - 0.005))
+    assert line[-1, 0] < 0.0, f"it goes on to {line[-1]}"
+
+
 def test_a_start_outside_the_domain_gives_an_empty_line():
     inner, outer = solved("circle").streamlines([(-2.0, 0.5), (-2.0, 5.0)], length=1.0,
                                                 domain=(-3.0, 3.0, -2.0, 2.0))

@@ -3,9 +3,10 @@
 from offbody._version import __version__
 from offbody.accuracy import Tolerance
 from offbody.bearings import from_bearing, to_bearing
+from offbody.compressibility import compressible_pressure, critical_mach
 from offbody.corrections import Corrected, Correction, Reason
 from offbody.errors import AccuracyWarning, InputError
-from offbody.model import Model, inside, solve
+from offbody.model import Model, WakeFlow, inside, solve
 from offbody.outlines import (
     Outline,
     circle,
@@ -18,6 +19,7 @@ from offbody.outlines import (
 )
 from offbody.parallel import threads
 from offbody.sensors import CrossedPaths, DiscSensor, PathSensor, PointSensor, WallPort
+from offbody.separations import Separation, separation
 from offbody.surroundings import Duct, Ground, OpenStream, Row
 from offbody.surveys import Survey, survey
 from offbody.uncertainties import (
@@ -50,13 +52,17 @@ __all__ = [
     "Reason",
     "Rectangular",
     "Row",
+    "Separation",
     "Survey",
     "Tolerance",
     "Uncertainty",
     "Wake",
+    "WakeFlow",
     "WallPort",
     "__version__",
     "circle",
+    "compressible_pressure",
+    "critical_mach",
     "curve",
     "ellipse",
     "four_digit",
@@ -65,6 +71,7 @@ __all__ = [
     "outline",
     "polygon",
     "read_outline",
+    "separation",
     "solve",
     "survey",
     "threads",

@@ -60,6 +60,16 @@ A case is a TOML file. Every key, with [] round what may be left out:
                                  [along x, along y]
     [bearing]                    one, or a list; left out: the prevailing wind, else the worst
 
+    [uncertainty]                tolerances, for the budget in the report; each of them is
+                                 { within = 0.02 }: anywhere up to that far either way, or
+                                 { standard = 0.01 }: normal, by its standard uncertainty;
+                                 with the unit in the key where it is no length
+    [boom_length], [position]    { within } or { standard }, in the unit of length
+    [boom_angle], [alignment], [direction_calibration], [model_direction]
+                                 { within_degrees } or { standard_degrees }
+    [speed_calibration], [model_speed]
+                                 { within_percent } or { standard_percent }
+
     [record]                     the columns of the sensors' record, for `offbody correct`; see
                                  ``offbody.records`` for its keys
 
@@ -138,6 +148,8 @@ class Case:
     panels: object
     order: int | None
     region: Region
+    tolerances: dict
+    text: str = field(repr=False)
 
     def directions(self, angles):
         """Directions of the stream for angles in the case's own convention."""
@@ -174,6 +186,22 @@ class Case:
             if self.by_bearing:
                 return ob.survey(model, self.sensors, bearings=self.angles)
             return ob.survey(model, self.sensors, directions=self.angles)
+
+    def uncertainty(self, table):
+        """What the case's tolerances make of its survey, or None where it states none."""
+        if not self.tolerances:
+            return None
+        booms = {
+            sensor.name: boom[0]
+            for sensor, boom in zip(self.sensors, self.booms, strict=True)
+            if boom is not None
+        }
+        given = {
+            name: dict.fromkeys(booms, tolerance) if name in _OF_BOOMS else tolerance
+            for name, tolerance in self.tolerances.items()
+        }
+        with _located(self.file, self.in_its_names):
+            return ob.uncertainty(table, boom_foot=booms, **given)
 
     def grid_lines(self, model, winds=1):
         """The lines (x, y) of the dense grid: as the case says, or round bodies and sensors."""
@@ -241,7 +269,8 @@ def read_case(path):
     ['cup', 'propeller vane', 'sonic']
     """
     reading = _Reading(Path(path))
-    top = _Table(reading, "", _read_entries(Path(path)))
+    text, entries = _read_entries(Path(path))
+    top = _Table(reading, "", entries)
     title = top.text("title", Path(path).stem)
     length_unit = top.choice("length_unit", LENGTH_UNITS)
     reading.surroundings = _surroundings(top.table("surroundings", optional=True))
@@ -250,6 +279,7 @@ def read_case(path):
     sensors, booms = _sensors(top, bodies)
     panels, order = _panels(top.table("panels", optional=True), len(bodies))
     region = _region(top.table("field", optional=True))
+    tolerances = _tolerances(top.table("uncertainty", optional=True), booms)
     if top.has("record"):
         with _located(reading.file):
             read_settings(top.entries["record"], reading.by_bearing)
@@ -271,11 +301,13 @@ def read_case(path):
         panels=panels,
         order=order,
         region=region,
+        tolerances=tolerances,
+        text=text,
     )
 
 
 def _read_entries(path):
-    """The bare TOML of a case file."""
+    """The text of a case file, and its bare TOML."""
     try:
         raw = path.read_bytes()
     except FileNotFoundError:
@@ -283,7 +315,8 @@ def _read_entries(path):
     except OSError as error:
         raise InputError(f"{path}: cannot read the case file: {error.strerror}") from None
     try:
-        return tomllib.loads(raw.decode("utf-8-sig"))
+        text = raw.decode("utf-8-sig")
+        return text, tomllib.loads(text)
     except UnicodeDecodeError as error:
         line = raw.count(b"\n", 0, error.start) + 1
         raise InputError(f"{path}: line {line}: not UTF-8; save the file as UTF-8") from None
@@ -896,3 +929,44 @@ def _region(section):
     angles = section.wind("{}", optional=True)
     section.close()
     return Region(x, y, spacing, points, angles)
+
+
+def _tolerances(section, booms):
+    """The distributions by the names that ``ob.uncertainty`` has for them."""
+    found = {
+        name: _tolerance(section.table(name), *unit)
+        for name, unit in _TOLERANCES.items()
+        if section.has(name)
+    }
+    for name in _OF_BOOMS & found.keys():
+        if not any(boom is not None for boom in booms):
+            raise section.error(name, "no sensor has a boom; say 'position' in its place")
+    section.close()
+    return found
+
+
+def _tolerance(section, unit, size):
+    keys = {f"within{unit}": ob.Rectangular, f"standard{unit}": ob.Normal}
+    given = [key for key in keys if section.has(key)]
+    if not given:
+        raise section.missing("a number", *keys)
+    if len(given) == 2:
+        raise section.error(given[1], f"given beside {given[0]!r}; a tolerance is said one way")
+    value = section.number(given[0], least=0.0)
+    section.close()
+    return keys[given[0]](value * size)
+
+
+# The unit that a tolerance's keys name, and the size of it in ob.uncertainty's own.
+_LENGTH, _DEGREES, _PERCENT = ("", 1.0), ("_degrees", 1.0), ("_percent", 0.01)
+_TOLERANCES = {
+    "boom_length": _LENGTH,
+    "boom_angle": _DEGREES,
+    "position": _LENGTH,
+    "alignment": _DEGREES,
+    "speed_calibration": _PERCENT,
+    "direction_calibration": _DEGREES,
+    "model_speed": _PERCENT,
+    "model_direction": _DEGREES,
+}
+_OF_BOOMS = {"boom_length", "boom_angle"}

@@ -5,8 +5,9 @@ import textwrap
 import numpy as np
 from scipy.ndimage import distance_transform_edt
 
-from offbody.reports import LIMIT
-from offbody.separations import WAKE_HALF_ANGLE
+from offbody.pages import FEW, angle_axis, angle_words, laid_out, value_limits
+from offbody.reports import LIMIT, place_of
+from offbody.separations import DOUBTFUL_HALF_ANGLE, DOUBTFUL_START, WAKE_HALF_ANGLE
 from offbody.surroundings import holds
 
 DOTS_PER_INCH = 150
@@ -20,9 +21,9 @@ BODY = "#4d4d4d"
 SPEED = "#0072b2"  # blue and vermilion are told apart with every kind of colour vision
 DIRECTION = "#d55e00"
 SHADE = "#d9d9d9"
+MARGIN = "#f0f0f0"  # doubtful, and dotted besides
 BAND = "#b8e0cc"
 LEE = "#f4f4f4e0"
-FEW = 40  # winds, up to which each is marked by a dot
 WIDEST_SHADE = 10.0  # degrees about a wind that is not trusted
 
 
@@ -127,23 +128,46 @@ def _draw_streamlines(axes, model, x, y, direction):
 
 
 def _draw_lee(axes, model, y, spans, direction):
-    """Hatch where the survey trusts nothing: the widening strip behind a bluff body."""
+    """Hatch the wakes, where the survey trusts nothing, and dot the doubtful margins round them."""
     from matplotlib.patches import Polygon
 
     far = 3.0 * sum(spans)
     for body, outline in enumerate(model.outlines):
         if outline.edge is not None:
             continue
-        left, right = model.widest(body, direction)
-        corners = [right, left]
-        for corner, side in ((left, 1), (right, -1)):
-            along = np.radians(direction + side * WAKE_HALF_ANGLE)
-            corners.append(corner + far * np.array([np.cos(along), np.sin(along)]))
+        ends = _leaving(model, body, direction)
+        ahead = DOUBTFUL_START * (ends[0] - ends[1]) @ _along(direction + 90.0)
+        margin = _strip(ends, direction, DOUBTFUL_HALF_ANGLE, far, ahead)
+        wake = _strip(ends, direction, WAKE_HALF_ANGLE, far)
         for shift in _shifts(model.surroundings, y):
             axes.add_patch(Polygon(
-                corners + shift, facecolor=LEE, edgecolor="#a0a0a0", hatch="////", linewidth=0,
+                margin + shift, facecolor="none", edgecolor="#808080", hatch="..", linewidth=0,
+                zorder=2.5,
+            ))
+            axes.add_patch(Polygon(
+                wake + shift, facecolor=LEE, edgecolor="#a0a0a0", hatch="////", linewidth=0,
                 zorder=3,
             ))
+
+
+def _leaving(model, body, direction):
+    """Left and right of the stream, (2, 2), where a survey takes the flow to leave a body."""
+    if model.wakes[body] is None:
+        return model.widest(body, direction)
+    return model.wake(body, direction).points
+
+
+def _strip(ends, direction, half_angle, far, ahead=0.0):
+    """Corners of the strip downstream of two points that widens on either side."""
+    left, right = ends - ahead * _along(direction)
+    return np.array([
+        right, left, left + far * _along(direction + half_angle),
+        right + far * _along(direction - half_angle),
+    ])
+
+
+def _along(angle):
+    return np.array([np.cos(np.radians(angle)), np.sin(np.radians(angle))])
 
 
 def _shifts(surroundings, y):
@@ -178,7 +202,7 @@ def _draw_sensors(axes, case, model):
             axes.add_patch(Circle(
                 sensor.centre, sensor.radius, facecolor="none", edgecolor=INK, zorder=6
             ))
-        place = tuple(np.round(_place(sensor, model), 9))
+        place = tuple(np.round(place_of(sensor, model), 9))
         axes.plot(*place, "o", markersize=3, color="white", markeredgecolor=INK, zorder=7)
         tags.setdefault(place, []).append(number)
     middle = np.mean(model.extent[:2]), np.mean(model.extent[2:])
@@ -192,23 +216,12 @@ def _draw_sensors(axes, case, model):
         )
     key = [f"{number}  {sensor.name}" for number, sensor in enumerate(case.sensors, start=1)]
     if any(outline.edge is None for outline in model.outlines):
-        key.append("hatched: lee, not predicted")
+        key.append("hatched: lee, not predicted; dotted: its margin, doubtful")
     axes.figure.supxlabel(_wrapped(" \u2002 ".join(key), 110), fontsize=9, parse_math=False)
 
 
 def _wrapped(text, width):
     return "\n".join(textwrap.wrap(text, width, break_long_words=False))
-
-
-def _place(sensor, model):
-    """The one point that stands for a sensor in a picture."""
-    if sensor.kind != "port":
-        return sensor.centre
-    wall = model.surface(sensor.body)
-    around = np.concatenate([wall.points, wall.points[:1]])
-    length = np.hypot(*np.diff(around, axis=0).T).sum()
-    arc = sensor.arc_fraction * length
-    return np.array([np.interp(arc, wall.arc, line, period=length) for line in wall.points.T])
 
 
 def _draw_stream(axes, case, angle, direction):
@@ -275,23 +288,24 @@ def _draw_page(path, case, table, page):
 
     figure = _figure(10.0, 1.2 + 2.4 * len(page))
     rows = figure.subplots(len(page), 2, sharex=True, squeeze=False)
-    order, angles = _laid_out(table.angles)
-    step = 45 if np.ptp(angles) > 120 else 15 if np.ptp(angles) > 30 else 5
+    order, angles = laid_out(table.angles)
+    *limits, step = angle_axis(angles)
     for (left, right), place in zip(rows, page, strict=True):
         for axes, column in zip((left, right), _columns(case, table, place), strict=True):
-            _draw_column(axes, angles, table.trust[order, place], column, order)
+            _draw_column(axes, angles, table, place, column, order)
         left.set_title(table.names[place], loc="left", fontsize=10, parse_math=False)
     for axes in rows[-1]:
         axes.set_xlabel(
             "bearing the wind comes from (degrees)" if case.by_bearing
             else "direction the stream goes to (degrees)"
         )
-        axes.set_xlim(*_ends(angles))
+        axes.set_xlim(*limits)
         axes.xaxis.set_major_locator(MultipleLocator(step))
-        axes.xaxis.set_major_formatter(lambda angle, _: f"{angle - 360 * (angle > 360):g}")
+        axes.xaxis.set_major_formatter(lambda angle, _: angle_words(angle))
     figure.suptitle(_wrapped(case.title, 90), fontsize=12, parse_math=False)
     figure.supxlabel(
-        "grey: not trusted     green: speed within 1 percent of the undisturbed", fontsize=9
+        "grey: not trusted     dotted: trusted, but doubtful     "
+        "green: speed within 1 percent of the undisturbed", fontsize=9,
     )
     figure.savefig(path)
 
@@ -314,10 +328,10 @@ def _columns(case, table, place):
         yield label, table.direction_error[:, place], DIRECTION, 0.0, None
 
 
-def _draw_column(axes, angles, trust, column, order):
+def _draw_column(axes, angles, table, place, column, order):
     axes.tick_params(labelsize=8)
     label, values, colour, undisturbed, band = column
-    values = values[order]
+    values, trust = values[order], table.trust[order, place]
     if not np.isfinite(values).any():
         axes.set_yticks([])
         axes.text(0.5, 0.5, "not read", transform=axes.transAxes, ha="center", color="#808080")
@@ -325,10 +339,11 @@ def _draw_column(axes, angles, trust, column, order):
     axes.set_ylabel(label, fontsize=8)
     steps = np.diff(angles)
     step = min(np.median(steps), WIDEST_SHADE) if steps.size else WIDEST_SHADE
-    shaded = angles[~trust]
-    for block in np.split(shaded, np.flatnonzero(np.diff(shaded) > 1.5 * step) + 1):
-        if block.size:
-            axes.axvspan(block[0] - step / 2, block[-1] + step / 2, color=SHADE, linewidth=0)
+    doubtful = table.doubtful[order, place] & trust
+    for shaded, colours, hatch in ((doubtful, MARGIN, ".."), (~trust, SHADE, "")):
+        for first, last in _blocks(angles[shaded], step):
+            axes.axvspan(first - step / 2, last + step / 2, facecolor=colours, hatch=hatch,
+                         edgecolor="#b0b0b0", linewidth=0)
     if band:
         axes.axhspan(undisturbed - band, undisturbed + band, color=BAND, linewidth=0, zorder=1.5)
     axes.axhline(undisturbed, color=INK, linewidth=0.8, linestyle=":")
@@ -337,35 +352,11 @@ def _draw_column(axes, angles, trust, column, order):
         line = np.insert(np.where(shown, values, np.nan), gaps, np.nan)
         axes.plot(np.insert(angles, gaps, np.nan), line, dots, color=colour, linewidth=1.4,
                   marker="" if len(angles) > FEW else "o", markersize=3)
-    axes.set_ylim(*_limits(values[trust], undisturbed, 2 * band if band else 0.5))
+    axes.set_ylim(*value_limits(values[trust], undisturbed, 2 * band if band else 0.5))
 
 
-def _laid_out(angles):
-    """The order in which the angles grow along the axis, and how they are counted there.
-
-    Winds of less than half a turn start after the gap, which may carry them across north.
-    """
-    turned = angles % 360.0
-    order = np.argsort(turned)
-    turned = turned[order]
-    gaps = np.diff(turned, append=turned[0] + 360.0)
-    cut = int(gaps.argmax()) + 1
-    if gaps[cut - 1] > 180.0:
-        turned = np.concatenate([turned[cut:], turned[:cut] + 360.0])
-        order = np.roll(order, -cut)
-    return order, turned
-
-
-def _ends(angles):
-    """Where the axis of the angles begins and ends."""
-    room = 5.0 if len(angles) <= FEW else 0.0
-    if np.ptp(angles) >= 180.0:
-        return -room, 360.0 + room
-    return angles[0] - room, angles[-1] + room
-
-
-def _limits(values, undisturbed, least):
-    """Limits that show every trusted value, and never blow up a trifle."""
-    departures = np.append(values[np.isfinite(values)] - undisturbed, [-least, least])
-    room = 0.08 * np.ptp(departures)
-    return undisturbed + departures.min() - room, undisturbed + departures.max() + room
+def _blocks(angles, step):
+    """First and last of every block of neighbouring angles."""
+    for block in np.split(angles, np.flatnonzero(np.diff(angles) > 1.5 * step) + 1):
+        if block.size:
+            yield block[0], block[-1]

@@ -14,7 +14,10 @@ def as_number(name, value, *, positive=False, least=None, greatest=None):
     if isinstance(value, (bool, np.bool_)) or not isinstance(value, numbers.Real):
         if not (isinstance(value, np.ndarray) and value.ndim == 0 and value.dtype.kind in "iuf"):
             raise InputError(f"{name} must be a number, got {value!r}")
-    number = float(value)
+    try:
+        number = float(value)
+    except OverflowError:
+        raise InputError(f"{name} is too large for a number, got {str(value)[:20]}...") from None
     if not math.isfinite(number):
         raise InputError(f"{name} must be finite, got {value!r}")
     if positive and number <= 0:
@@ -50,7 +53,7 @@ def as_reals(name, value):
     if not np.isfinite(array).all():
         first = np.argwhere(~np.isfinite(array))[0]
         place = ", ".join(str(i) for i in first)
-        raise InputError(f"{name} must be finite; entry [{place}] is {array[tuple(first)]!r}")
+        raise InputError(f"{name} must be finite; entry [{place}] is {array[tuple(first)]:g}")
     return array
 
 

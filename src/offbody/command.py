@@ -197,19 +197,21 @@ def _demo(options):
 
 def _write_survey(case, options, source=None):
     """Survey a case into a folder; returns what to print."""
-    with reports.whole_folder(options.out, options.overwrite) as folder, _bar(5, "solving") as bar:
+    with reports.whole_folder(options.out, options.overwrite) as folder, _bar(6, "solving") as bar:
         with _cautions() as cautions:
             model = case.solve()
             _advance(bar, "surveying")
             table = case.survey(model)
             page = reports.summary(case, table, cautions)
+            budget = case.uncertainty(table)
         _advance(bar, "writing tables")
         (folder / "summary.txt").write_text(page, encoding="utf-8")
         reports.write_csv(folder / "survey.csv", case, table)
         reports.write_json(folder / "survey.json", case, table)
         if source is not None:
             (folder / "case.toml").write_bytes(source.read_bytes())
-        no_pictures = charts.missing_library()
+        maps = []
+        no_pictures = charts.missing_library() or ""
         if not no_pictures:
             _advance(bar, "drawing sensors")
             charts.draw_sensors(folder, case, table)
@@ -218,6 +220,10 @@ def _write_survey(case, options, source=None):
             for angle, picture in _pictures("map", _angles_to_show(case, table)):
                 velocity = _velocity(case, model, x, y, angle)
                 _draw_map(folder / picture, case, model, x, y, velocity, angle)
+                maps.append((angle, (folder / picture).read_bytes()))
+        _advance(bar, "writing the report")
+        report = reports.survey_page(case, table, budget, maps, no_pictures, cautions)
+        (folder / "report.html").write_text(report, encoding="utf-8")
         files = sorted(entry.name for entry in folder.iterdir())
     return f"{page}\n{_closing(options.out, files, no_pictures)}"
 

@@ -66,7 +66,7 @@ def _gaps(walls, surroundings):
     for body, wall in enumerate(walls):
         for other, around in enumerate(walls):
             if other != body and _holds(around, wall.sample_points[:1]).any():
-                _refuse_overlap(walls, body, other, wall.sample_points[0])
+                _refuse_overlap(walls, body, other, wall.sample_points[0], surroundings)
     return [_gap_scale(*facing) for facing in found]
 
 
@@ -86,7 +86,7 @@ def _nearest(walls, body, surroundings, sizes):
     nearest = int(np.argmin(distance))
     other = int(np.concatenate(owner)[which[nearest]])
     if distance[nearest] < TOUCH * min(sizes[body], sizes[other]):
-        _refuse_overlap(walls, body, other, here[nearest])
+        _refuse_overlap(walls, body, other, here[nearest], surroundings)
     return distance, np.abs(walls[body].sample_curvature) + np.concatenate(bending)[which]
 
 
@@ -105,15 +105,22 @@ def _refuse_beyond_walls(wall, body, surroundings, size):
         sign = 1.0 if k == 0 else -1.0
         clear = np.min(sign * (wall.sample_points.imag - height))
         if clear < TOUCH * size:
-            side, way = (("below", "up") if k == 0 else ("above", "down"))
-            raise InputError(
-                f"body {body} ({wall.outline.name}) touches the wall y = {height:g} or reaches "
-                f"{max(0.0, -clear):.3g} {side} it; move it {way}"
-            )
+            _refuse_wall(wall, body, surroundings, k)
 
 
-def _refuse_overlap(walls, body, other, place):
+def _refuse_wall(wall, body, surroundings, k):
+    way = "up" if k == 0 else "down"
+    raise InputError(
+        f"body {body} ({wall.outline.name}) touches or crosses the wall "
+        f"y = {surroundings.walls[k]:g} of {surroundings!r}; move it {way}"
+    )
+
+
+def _refuse_overlap(walls, body, other, place, surroundings):
     where = f"near ({place.real:.6g}, {place.imag:.6g})"
+    if body == other and surroundings.walls:
+        nearest = np.argmin([abs(place.imag - height) for height in surroundings.walls])
+        _refuse_wall(walls[body], body, surroundings, int(nearest))
     if body == other:
         raise InputError(
             f"body {body} ({walls[body].outline.name}) overlaps or touches its own copy {where}; "

@@ -24,6 +24,7 @@ from offbody.accuracy import (
     SHRINKING,
     Tolerance,
 )
+from offbody.bracings import Bracing, Screens
 from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
 from offbody.equation import BY_MATRIX, Equation
 from offbody.errors import AccuracyWarning, InputError
@@ -38,7 +39,10 @@ DEFAULT_ORDER = 16
 ALONG_ROW = 1e-11  # the cosine of an angle that is 90 degrees
 
 
-def solve(outlines, surroundings=None, panels=None, order=None, circulation=None, wakes=None):
+def solve(
+    outlines, surroundings=None, panels=None, order=None, circulation=None, wakes=None,
+    bracings=None,
+):
     """The potential flow about one or several bodies, ready for any direction.
 
     Parameters
@@ -60,6 +64,8 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
         the body has a sharp edge, else zero.
     wakes : Wake or sequence, optional
         Per body, None or the wake whose displacement is to be included.
+    bracings : Bracing or sequence, optional
+        Faces of lattice members between the bodies, which the flow passes through.
 
     Returns
     -------
@@ -106,7 +112,7 @@ def solve(outlines, surroundings=None, panels=None, order=None, circulation=None
     ]
     wakes = _as_wakes(wakes, len(bodies))
     walls, gaps = measure(bodies, surroundings)
-    given = (surroundings, order, circulations, wakes)
+    given = (surroundings, order, circulations, wakes, _as_bracings(bracings))
     if tolerance is None:
         return Model(walls, lay(walls, gaps, counts), *given)
     return _refined(walls, gaps, tolerance.surface_speed, given)
@@ -242,18 +248,22 @@ class Model:
     outlines : tuple of Outline
     surroundings : OpenStream, Ground, Duct or Row
     wakes : tuple of Wake or None
+    bracings : tuple of Bracing
     order, node_count : int
     panel_counts : tuple of int, per body
     solves : int
         How many times a tolerance made it refine its panels, and the first.
     """
 
-    def __init__(self, walls, ends, surroundings, order, circulations, wakes):
+    def __init__(self, walls, ends, surroundings, order, circulations, wakes, bracings):
         self.outlines = tuple(wall.outline for wall in walls)
         self.surroundings, self.order, self.wakes = surroundings, order, tuple(wakes)
+        self.bracings = bracings
         self.solves = 1
         self._arcs = walls
         self._panels = assemble(walls, ends, order, surroundings)
+        self._screens = Screens(bracings, surroundings)
+        self._screens.refuse_unfit(self._panels)
         self._prescribed, self._settled = tuple(circulations), {}
         self._solve()
 
@@ -292,6 +302,8 @@ class Model:
         circulation = np.eye(panels.bodies)[self._turning]
         still = np.zeros((len(circulation), self.node_count))
         self._spin = self._equation.vortices(still, circulation) if self._turning else still
+        screened = panels.tangents * self._screens.velocity(panels.nodes)
+        self._screened = self._equation.vortices(screened.real) if self.bracings else screened.real
 
     def _has_edge(self, body):
         return self.outlines[body].edge is not None
@@ -312,7 +324,7 @@ class Model:
         (directions, R) that combines fields of the rows; and the onset u - i v (directions,) at
         which images that move the stream far upstream (see _shift) leave it as it was given.
         """
-        if any(self.wakes):
+        if self._is_pushed:
             strengths, onset = self._pushed(directions, self._wall_normal_speeds(directions))
             return strengths, None, onset @ [1.0, -1j]
         onset, circulations = self._onset(directions, np.zeros(len(directions)), None)
@@ -322,6 +334,11 @@ class Model:
             return combination @ rows, None, onset @ [1.0, -1j]
         return rows, combination, onset @ [1.0, -1j]
 
+    @property
+    def _is_pushed(self):
+        """Whether sources push the stream aside, so that each direction has strengths of its own."""
+        return bool(any(self.wakes) or self.bracings)
+
     def _pushed(self, directions, blown):
         """(directions, N) strengths with normal speeds blown through walls; the onset there."""
         moved = self._equation.response(blown)
@@ -329,7 +346,12 @@ class Model:
         return gamma + 1j * blown, onset
 
     def _wall_flow(self, directions, flux, moved):
-        """(directions, N) gamma where sources of a flux (directions,) move it; the onset there."""
+        """(directions, N) gamma where sources of a flux (directions,) move it; the onset there.
+
+        Those of bracings come on top.
+        """
+        screens = self._screens.strengths(directions)
+        flux, moved = flux + screens @ self._screens.lengths, moved + screens @ self._screened
         onset, circulations = self._onset(directions, flux, moved)
         return onset @ self._unit + moved + circulations @ self._spin, onset
 
@@ -338,14 +360,14 @@ class Model:
         """(R, N) strengths of the error's field, for the rows of a model without wakes."""
         onset = np.zeros(len(self._unit) + len(self._spin), complex)
         onset[:2] = 1.0, -1j
-        return self._errors(np.concatenate([self._unit, self._spin]), onset)
+        return self._errors(np.concatenate([self._unit, self._spin]), onset[:, None])
 
-    def _errors(self, strengths, onset):
+    def _errors(self, strengths, free):
         """Strengths (R, N) of the flow that the walls let through, but should not.
 
-        See offbody.accuracy. A sharp edge's Kutta condition holds for the error as well.
+        free: onset and bracings at the nodes, u - i v, (R, 1) where they are the same at all. See offbody.accuracy. A sharp edge's Kutta condition holds for the error as well.
         """
-        through = self._panels.tangents * onset[:, None] + self._equation.wall_velocity(strengths)
+        through = self._panels.tangents * free + self._equation.wall_velocity(strengths)
         errors = self._equation.response(through.imag - strengths.imag)
         spin = self._kutta(self._spin)
         edges = [k for k, body in enumerate(self._turning) if self._prescribed[body] is None]
@@ -357,8 +379,10 @@ class Model:
     def _error_state(self, directions):
         """Rows (R, N) and combination, as _state, of the error's field."""
         rows, combination, onset = self._state(directions)
-        if any(self.wakes):
-            return self._errors(rows, onset), None
+        if self._is_pushed:
+            screens = self._screens.strengths(directions)
+            free = onset[:, None] + screens @ self._screens.velocity(self._panels.nodes)
+            return self._errors(rows, free), None
         if combination is None:
             # as few rows as directions: the combination is that of the unit flows all the same
             components, circulations = self._onset(directions, np.zeros(len(directions)), None)
@@ -640,6 +664,8 @@ class Model:
         fields = evaluate(self._panels, self.surroundings, rows, z)
         total = fields if combination is None else combination @ fields
         total = total + onset[:, None]
+        if self.bracings:
+            total += self._screens.strengths(directions) @ self._screens.velocity(z)
         return self._masked(total, z) if mask else total
 
     def _field(self, direction):
@@ -654,8 +680,9 @@ class Model:
         return velocity
 
     def _masked(self, values, z):
-        nowhere = (flow.enclosing_body(self._panels, self._home(z)) >= 0)
-        values[:, nowhere | ~holds(self.surroundings, z)] = np.nan
+        nowhere = flow.enclosing_body(self._panels, self._home(z)) >= 0
+        nothing = complex(np.nan, np.nan) if np.iscomplexobj(values) else np.nan
+        values[:, nowhere | ~holds(self.surroundings, z)] = nothing
         return values
 
     def _home(self, z):
@@ -676,7 +703,10 @@ class Model:
         z, flat = _complex(points).ravel(), np.atleast_1d(directions)
         rows, combination, _ = self._state(flat)
         fields = flow.gradient(self._panels, self.surroundings, rows, z)
-        total = self._masked(fields if combination is None else combination @ fields, z)
+        total = fields if combination is None else combination @ fields
+        if self.bracings:
+            total += self._screens.strengths(flat) @ self._screens.gradient(z)
+        total = self._masked(total, z)
         gradient = np.stack(
             [np.stack([total.real, -total.imag], -1), np.stack([-total.imag, -total.real], -1)], -2
         )
@@ -715,7 +745,7 @@ class Model:
             self._panels, self.surroundings, rows, self._rearmost(along), along, z
         ).imag
         total = fields if combination is None else combination @ fields
-        total = total + (z * onset[:, None]).imag
+        total = total + (z * onset[:, None] + self._screens.potential(flat, z)).imag
         return _shaped(self._masked(total, z).reshape((len(flat),) + points.shape[:-1]), directions)
 
     def _rearmost(self, along):
@@ -980,7 +1010,7 @@ class Model:
 
 def _as_outlines(outlines):
     bodies = [outlines] if isinstance(outlines, Outline) else outlines
-    if not isinstance(bodies, Sequence) or not bodies:
+    if isinstance(bodies, str) or not isinstance(bodies, Sequence) or not bodies:
         raise InputError(f"outlines must be an outline or a sequence of them, got {outlines!r}")
     for k, body in enumerate(bodies):
         if not isinstance(body, Outline):
@@ -996,8 +1026,16 @@ def _as_wakes(given, bodies):
     return wakes
 
 
+def _as_bracings(given):
+    bracings = (given,) if isinstance(given, Bracing) else tuple(given or ())
+    for bracing in bracings:
+        if not isinstance(bracing, Bracing):
+            raise InputError(f"bracings must hold ob.Bracing(...), got {bracing!r}")
+    return bracings
+
+
 def _per_body(name, given, bodies):
-    if not isinstance(given, (Sequence, np.ndarray)):
+    if isinstance(given, str) or not isinstance(given, (Sequence, np.ndarray)):
         return [given] * bodies
     if len(given) != bodies:
         raise InputError(f"{name} has {len(given)} entries for {bodies} bodies; give one for each")

@@ -14,13 +14,13 @@ def reach(order):
     """Half-chords from a panel's middle beyond which its nodes are as good as the closed form.
 
     The error of the node sum is about rho^(-2 order), rho = t + sqrt(t^2 - 1): where that is 1e-15,
-    but not below 2, for panels that curve, nor above 6, as low orders have greater errors anyway.
+    but not below 2, for panels that curve, nor above 10, as low orders have greater errors anyway.
     For order 1, where the odd series takes over. bench/formulations.py prints the table behind it.
     """
     if order == 1:
         return 3.0
     rho = 10.0 ** (7.5 / order)
-    return float(np.clip(0.5 * (rho + 1.0 / rho), 2.0, 6.0))
+    return float(np.clip(0.5 * (rho + 1.0 / rho), 2.0, 10.0))
 
 
 @dataclass(frozen=True, eq=False)
@@ -75,14 +75,15 @@ class Panels:
         return np.array(rows)
 
 
-def assemble(walls, bodies, order, surroundings):
+def assemble(walls, bodies, order, surroundings, closed=True):
     """The panels of all walls between given arc positions, one array of them for each body."""
     x, shares = gauss(order)
     starts = np.concatenate([[0], np.cumsum([len(ends) - 1 for ends in bodies])])
     parts = []
     for wall, ends in zip(walls, bodies, strict=True):
         corners = wall.outline.position(wall.parameter(ends))
-        corners[-1] = corners[0]  # one point, so that what meets there cancels exactly
+        if closed:
+            corners[-1] = corners[0]  # one point, so that what meets there cancels exactly
         middle, half = 0.5 * (ends[1:] + ends[:-1]), 0.5 * np.diff(ends)
         arcs = middle[:, None] + half[:, None] * x
         parameter = wall.parameter(arcs.ravel())

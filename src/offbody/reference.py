@@ -8,7 +8,7 @@ together. ``kernels/closed_form.h`` has the formulas, ``kernels/_kernels.pyx`` t
 
 import numpy as np
 
-PAIRS = 32768   # of targets and sources in a block: the fastest of 2^12 to 2^17
+PAIRS = 32768   # of targets and sources in a block: the fastest of 2^13 to 2^16
 ON_END = 1e-14  # of the whole's size: nearer than this, a target is ON an end point
 OVER_TWO_PI_I = 1.0 / (2j * np.pi)
 

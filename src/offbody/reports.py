@@ -1,4 +1,4 @@
-"""What is kept of a case: tables for programs, a page for people, in a folder that is whole."""
+"""What is kept of a case: tables for programs, pages for people, in a folder that is whole."""
 
 import contextlib
 import csv
@@ -11,23 +11,28 @@ import shutil
 import textwrap
 from importlib import resources
 from pathlib import Path
+from typing import NamedTuple
 
 import numpy as np
 
+from offbody import pages
 from offbody._version import __version__
 from offbody.bearings import to_bearing
 from offbody.errors import InputError
 from offbody.surroundings import Duct, Ground, Row
+from offbody.surveys import WIDEST_STEP
 from offbody.surveys import _runs as runs
 
 LIMIT = 0.01  # IEC 61400-12-1: keep the distortion by the mast below 1 percent
 DIRECTION_LIMIT = 1.0  # degrees; a rule of this project: no standard is quoted for it
 PAGE_WIDTH = 92
-MOST_SECTORS = 8  # of one kind that the page lists; the table has them all
+MOST_SECTORS = 8  # of one kind that a page lists; the table has them all
+MOST_RINGS = 8  # sensors round the plan
+MOST_BUDGETS = 6  # sensors whose budget is printed line by line
 
 # What a folder may hold and still be replaced: no file that somebody else put there.
 OWN_FILES = re.compile(
-    r"summary\.txt|survey\.(csv|json)|field\.npz|(map|field|sensors)(-[-.\w]+)?\.png"
+    r"summary\.txt|report\.html|survey\.(csv|json)|field\.npz|(map|field|sensors)(-[-.\w]+)?\.png"
 )
 BUILT_IN_CASE = resources.files("offbody") / "demo.toml"
 
@@ -293,40 +298,71 @@ def _sensor_lines(case, table, place):
         )
 
 
-def _findings(case, table, place):
-    """Label and finding, by what the sensor reads."""
-    trust = table.trust[:, place]
-    if np.isfinite(table.speed_ratio[:, place]).any():
-        departure = table.speed_ratio[:, place] - 1
-        word = "component" if table.sensors[place].kind == "path" else "speed"
-        yield f"{word} within 1 percent", _sectors(table, trust & (np.abs(departure) <= LIMIT))
-        yield f"worst {word}", _worst(table, departure, trust, lambda e: _percent(case, e))
+class Reading(NamedTuple):
+    """One quantity that a sensor reads, and by how much it is off."""
+
+    name: str
+    errors: np.ndarray  # (n,) in percent, degrees or pressure coefficients; NaN where not read
+    unit: str
+    limit: float | None  # of the errors, in the same unit
+    worded: object  # an error in words
+
+    @property
+    def limit_words(self):
+        return f"within {self.limit:g} {self.unit.removesuffix('s')}"
+
+
+def readings(case, table, place):
+    """The readings of one sensor of a survey."""
+    sensor, ratio = table.sensors[place], table.speed_ratio[:, place]
+    if np.isfinite(ratio).any():
+        name = "component" if sensor.kind == "path" else "speed"
+        yield Reading(name, 100 * (ratio - 1), "percent", 100 * LIMIT,
+                      lambda error: _percent(case, error))
     component = table.component_error[:, place]
     if np.isfinite(component).any():
-        square = np.isnan(table.speed_ratio[:, place])
-        if square.any():
-            yield "square to the path", f"{_sectors(table, square)}: no ratio there"
-        yield "worst component error", _worst(
-            table, component, trust, lambda e: f"{100 * e:+.2f} percent of the undisturbed speed"
-        )
+        yield Reading("component error", 100 * component, "percent", None,
+                      lambda error: f"{error:+.2f} percent of the undisturbed speed")
     turning = table.direction_error[:, place]
     if np.isfinite(turning).any():
-        good = trust & (np.abs(turning) <= DIRECTION_LIMIT)
         sense = "clockwise" if case.by_bearing else "counter-clockwise"
-        yield "direction within 1 degree", _sectors(table, good)
-        yield "worst direction error", _worst(
-            table, turning, trust, lambda e: f"{e:+.2f} degrees ({sense} positive)"
-        )
-    if table.sensors[place].kind == "port":
-        pressure = np.where(trust, table.static_error[:, place], np.nan)
-        if trust.any():
-            yield "pressure coefficient", (
-                f"{np.nanmin(pressure):.3f} to {np.nanmax(pressure):.3f} where trusted"
-            )
+        yield Reading("direction", turning, "degrees", DIRECTION_LIMIT,
+                      lambda error: f"{error:+.2f} degrees ({sense} positive)")
+    if sensor.kind == "port":
+        yield Reading("pressure coefficient", table.static_error[:, place], "", None,
+                      lambda error: f"{error:.3f}")
+
+
+def _findings(case, table, place):
+    """Label and finding, by what the sensor reads."""
+    trust, doubtful = table.trust[:, place], table.doubtful[:, place]
+    for reading in readings(case, table, place):
+        if reading.limit is not None:
+            yield f"{reading.name} {reading.limit_words}", _sectors(table, _within(reading, trust))
+        elif reading.name == "component error":
+            square = np.isnan(table.speed_ratio[:, place])
+            if square.any():
+                yield "square to the path", f"{_sectors(table, square)}: no ratio there"
+        if reading.unit:
+            yield f"worst {reading.name}", _worst(table, reading, trust)
+        elif trust.any():
+            yield reading.name, _range(reading, trust)
     yield "trusted", f"{trust.mean():.0%} of the angles"
+    if (trust & doubtful).any():
+        yield "trusted, but doubtful", f"{_sectors(table, trust & doubtful)}: at the edge of a lee"
     for reason in dict.fromkeys(table.reason[~trust, place]):
         here = table.reason[:, place] == reason
         yield "not trusted", f"{_sectors(table, here)}: {case.in_its_names(reason)}"
+
+
+def _within(reading, trust):
+    """(n,) where a reading is trusted and within its limit."""
+    return trust & (np.abs(reading.errors) <= reading.limit)
+
+
+def _range(reading, trust):
+    trusted = reading.errors[trust]
+    return f"{np.nanmin(trusted):.3f} to {np.nanmax(trusted):.3f} where trusted"
 
 
 def _sectors(table, good):
@@ -341,17 +377,415 @@ def _sectors(table, good):
     return ", ".join(texts) + more
 
 
-def _worst(table, errors, trust, worded):
+def _worst(table, reading, trust):
     """The greatest trusted error in words, and where it is."""
-    usable = np.flatnonzero(trust & np.isfinite(errors))
-    if not usable.size:
+    row = _worst_row(reading, trust)
+    if row is None:
         return "not known: no angle is trusted"
-    # Mirror images are equal but for rounding: the first of them stands for both.
-    row = usable[np.abs(errors[usable]).round(9).argmax()]
     kind = "bearing" if table.by_bearing else "direction"
-    return f"{worded(errors[row])} at {kind} {table.angles[row]:g}"
+    return f"{reading.worded(reading.errors[row])} at {kind} {table.angles[row]:g}"
+
+
+def _worst_row(reading, trust):
+    """Where the greatest trusted error is, or None."""
+    usable = np.flatnonzero(trust & np.isfinite(reading.errors))
+    if not usable.size:
+        return None
+    # Mirror images are equal but for rounding: the first of them stands for both.
+    return int(usable[np.abs(reading.errors[usable]).round(7).argmax()])
 
 
 def _percent(case, error):
-    speed = f" ({error * case.speed:+.2f} {case.speed_unit})" if case.speed else ""
-    return f"{100 * error:+.2f} percent{speed}"
+    speed = f" ({error / 100 * case.speed:+.2f} {case.speed_unit})" if case.speed else ""
+    return f"{error:+.2f} percent{speed}"
+
+
+# --- the page to keep -----------------------------------------------------------------------------
+
+
+def survey_page(case, table, budget, pictures=(), no_pictures="", cautions=()):
+    """The HTML page of a survey.
+
+    Parameters
+    ----------
+    case : Case
+    table : Survey
+    budget : Uncertainty or None
+        What the case's tolerances make of the table.
+    pictures : iterable of (angle, bytes)
+        Maps, as PNG, for some of the winds.
+    no_pictures : str
+        Why there are none.
+    cautions : iterable of str
+        What the library warned of on the way.
+
+    Returns
+    -------
+    str
+    """
+    sections = [
+        ("Answer", _answer(case, table, budget)),
+        ("Plan", _plan(case, table)),
+        ("Flow", _maps(case, pictures, no_pictures)),
+        ("Error", _curves(case, table, budget)),
+        ("Uncertainty", _budgets(case, table, budget)),
+        ("Limits and cautions", pages.bullets(
+            (*map(case.in_its_names, table.notes), *cautions, *CAUTIONS)
+        )),
+        ("To run it again", _rerun(case)),
+    ]
+    return pages.page(case.title, sections, __version__, _opening(case, table))
+
+
+def _kind(case):
+    return "bearing" if case.by_bearing else "direction"
+
+
+def _answer(case, table, budget):
+    rows = []
+    for place, name in enumerate(table.names):
+        rows += [
+            _answer_row(case, table, budget, place, name, reading)
+            for reading in readings(case, table, place)
+        ]
+    heads = ["Sensor", "Reads", "Within its limit", "Worst", "Expected", "Leave out", "Doubtful"]
+    caption = (
+        f"What each sensor reads against the undisturbed stream, by {_kind(case)} in degrees. "
+        f"Limits: {100 * LIMIT:g} percent of the speed (as IEC 61400-12-1 has it for a mast), "
+        f"{DIRECTION_LIMIT:g} degree of direction. Expected: the mean error and the root of its "
+        "mean square, over the trusted angles, all alike"
+        + ("; and what is left once corrected, at k = 2, in the middle of the angles."
+           if budget else ".")
+    )
+    lead = pages.paragraphs(_verdict(case, table), kind="lead")
+    return lead + pages.table(caption, heads, rows)
+
+
+def _verdict(case, table):
+    """Where a sensor can be believed, in one or two sentences."""
+    speeds = [
+        _within(reading, table.trust[:, place])
+        for place in range(len(table.names))
+        for reading in readings(case, table, place)
+        if reading.name == "speed"
+    ]
+    if not speeds:
+        covered = table.trust.any(axis=1)
+        return f"Some sensor can be trusted {_share(case, table, covered)}."
+    covered = np.any(speeds, axis=0)
+    who = "The sensor reads" if len(table.names) == 1 else "Some sensor reads"
+    return (
+        f"{who} within {100 * LIMIT:g} percent of the undisturbed speed "
+        f"{_share(case, table, covered)}."
+    )
+
+
+def _share(case, table, good):
+    """How many of the angles, and which not."""
+    counted = f"at {good.sum()} of {good.size} {_kind(case)}s"
+    if good.all() or not good.any():
+        return f"{counted}: {_sectors(table, good)}"
+    return f"{counted}; not at {_sectors(table, ~good)}"
+
+
+def _answer_row(case, table, budget, place, name, reading):
+    trust = table.trust[:, place]
+    left_out = [
+        f"{_sectors(table, table.reason[:, place] == reason)}: {case.in_its_names(reason)}"
+        for reason in dict.fromkeys(table.reason[~trust, place])
+    ]
+    doubtful = trust & table.doubtful[:, place]
+    return [
+        name,
+        reading.name,
+        _sectors(table, _within(reading, trust)) if reading.limit else "no limit",
+        _worst(table, reading, trust),
+        _expected(reading, trust, _expanded(budget, place, reading)),
+        "; ".join(left_out) or "nothing",
+        _sectors(table, doubtful) if doubtful.any() else "none",
+    ]
+
+
+def _expected(reading, trust, expanded):
+    """Mean and root mean square of the trusted errors; what is left of them once corrected."""
+    errors = reading.errors[trust & np.isfinite(reading.errors)]
+    if not errors.size:
+        return "not known"
+    if not reading.unit:
+        return _range(reading, trust)
+    text = f"mean {errors.mean():+.2f}, r.m.s. {np.sqrt(np.mean(errors**2)):.2f} {reading.unit}"
+    if expanded is not None:
+        text += f"; corrected \u00b1{np.nanmedian(expanded):.2f}"
+    return text
+
+
+def _expanded(budget, place, reading):
+    """Expanded uncertainty (n,) of a corrected reading in its own unit, or None."""
+    if budget is None or reading.name not in ("speed", "direction"):
+        return None
+    expanded = (
+        100 * budget.expanded_speed if reading.name == "speed" else budget.expanded_direction
+    )[:, place]
+    return expanded if np.isfinite(expanded).any() else None
+
+
+def _plan(case, table):
+    bodies = [body.outline.points(400) for body in case.bodies]
+    if isinstance(case.surroundings, Row):
+        pitch = np.array([0.0, case.surroundings.pitch])
+        bodies = [body + n * pitch for n in (0, -1, 1) for body in bodies]
+    ringed = () if case.surroundings.walls else range(min(len(table.names), MOST_RINGS))
+    drawing = pages.Plan(
+        bodies=bodies,
+        booms=[boom for boom in case.booms if boom is not None],
+        markers=[_marker(table, place) for place in range(len(table.names))],
+        rings=[pages.Ring(str(place + 1), _ring(case, table, place)) for place in ringed],
+        walls=case.surroundings.walls,
+        length_unit=case.length_unit,
+        by_bearing=case.by_bearing,
+    )
+    who = ", ".join(f"{number} {name}" for number, name in enumerate(table.names, start=1))
+    caption = f"To scale. Sensors: {who}."
+    if ringed:
+        comes = "wind" if case.by_bearing else "stream"
+        caption += (
+            f" A ring belongs to the sensor of its number: what it is worth when the {comes} "
+            "comes from there."
+        )
+        if not case.by_bearing:
+            caption += " The angles round it are the directions in which such a stream goes."
+        if len(table.names) > MOST_RINGS:
+            caption += f" Only the first {MOST_RINGS} sensors have rings."
+    if isinstance(case.surroundings, Row):
+        caption += " The row goes on without end."
+    key = [
+        ("within", "within its limits"), ("beyond", "trusted, beyond a limit or without one"),
+        ("doubtful", "trusted, but doubtful"), ("excluded", "leave out"),
+    ]
+    described = f"Plan of {', '.join(body.name for body in case.bodies)} with sensors {who}."
+    return pages.figure(pages.plan(drawing, described), caption, key if ringed else ())
+
+
+def _marker(table, place):
+    sensor = table.sensors[place]
+    paths = getattr(sensor, "paths", [sensor] if sensor.kind == "path" else [])
+    return pages.Marker(
+        place_of(sensor, table.model),
+        str(place + 1),
+        tuple(np.array([path.start, path.end]) for path in paths),
+        getattr(sensor, "radius", 0.0),
+    )
+
+
+def place_of(sensor, model):
+    """The one point that stands for a sensor in a drawing."""
+    if sensor.kind != "port":
+        return np.asarray(sensor.centre)
+    wall = model.surface(sensor.body)
+    around = np.concatenate([wall.points, wall.points[:1]])
+    length = np.hypot(*np.diff(around, axis=0).T).sum()
+    arc = sensor.arc_fraction * length
+    return np.array([np.interp(arc, wall.arc, line, period=length) for line in wall.points.T])
+
+
+def _ring(case, table, place):
+    """Sectors of the places from which a stream comes, by what the sensor is worth in it."""
+    trust, doubtful = table.trust[:, place], table.doubtful[:, place]
+    limits = [
+        _within(reading, trust)
+        for reading in readings(case, table, place)
+        if reading.limit is not None
+    ]
+    within = np.all(limits, axis=0) if limits else np.zeros_like(trust)
+    for fill, here in (
+        ("beyond", trust & ~doubtful & ~within), ("within", trust & ~doubtful & within),
+        ("doubtful", trust & doubtful), ("excluded", ~trust),
+    ):
+        for start, stop in _widened(table.angles, here):
+            if case.by_bearing:
+                start, stop = 90.0 - stop, 90.0 - start
+            else:
+                start, stop = start + 180.0, stop + 180.0
+            yield start, stop, fill
+
+
+def _widened(angles, here):
+    """Sectors (from, to), from growing to, which reach half way to the angles beside them."""
+    order, turned = pages.laid_out(angles)
+    steps = np.diff(turned)
+    half = min(np.median(steps) if steps.size else WIDEST_STEP, WIDEST_STEP) / 2
+    for start, stop in runs(angles, here):
+        yield start - half, stop + 360.0 * (stop < start) + half
+
+
+def _maps(case, pictures, no_pictures):
+    shown = [
+        pages.figure(
+            pages.picture(png, f"Map of the speed ratio with streamlines, {_kind(case)} "
+                               f"{angle:g} degrees, with the bodies, booms and sensors."),
+            f"Speed ratio and streamlines at {_kind(case)} {angle:g} degrees.",
+        )
+        for angle, png in pictures
+    ]
+    return "\n".join(shown) or pages.paragraphs(no_pictures)
+
+
+def _curves(case, table, budget):
+    """Every reading against the angle, one below the other."""
+    figures = []
+    for place, name in enumerate(table.names):
+        for reading in readings(case, table, place):
+            expanded = _expanded(budget, place, reading)
+            caption = f"{name}: {_worst(table, reading, table.trust[:, place])}."
+            figures.append(pages.figure(
+                _curve(case, table, place, reading, expanded), caption[0].upper() + caption[1:]
+            ))
+    band = []
+    if budget is not None:
+        band = [("band", "uncertainty once corrected, k = 2")]
+    key = pages.key([
+        ("line", "error"), *band, ("limit", "limit"), ("doubtful", "doubtful"),
+        ("excluded", "leave out: no curve"),
+    ])
+    return key + "\n".join(figures)
+
+
+def _curve(case, table, place, reading, expanded):
+    order, turned = pages.laid_out(table.angles)
+    trust = table.trust[order, place]
+    errors = np.where(trust, reading.errors[order], np.nan)
+    steps = np.diff(turned)
+    gaps = np.flatnonzero(steps > WIDEST_STEP) + 1
+    x, y = np.insert(turned, gaps, np.nan), np.insert(errors, gaps, np.nan)
+    low = high = None
+    if expanded is not None:
+        wide = np.insert(expanded[order], gaps, np.nan)
+        low, high = y - wide, y + wide
+    least = 2 * reading.limit if reading.limit else 0.5
+    shown = errors if low is None else np.concatenate([errors, low, high])
+    spans = [
+        (start - shift, stop - shift, fill)
+        for fill, here in (("doubtful", table.doubtful[:, place] & table.trust[:, place]),
+                           ("excluded", ~table.trust[:, place]))
+        for start, stop in _widened(table.angles, here)
+        for shift in (0.0, 360.0)
+    ]
+    *limits, step = pages.angle_axis(turned)
+    sense = ""
+    if reading.name == "direction":
+        sense = f", {'clockwise' if case.by_bearing else 'counter-clockwise'} positive"
+    unit = f" ({reading.unit}{sense})" if reading.unit else ""
+    label = reading.name if "error" in reading.name or not reading.unit else f"{reading.name} error"
+    drawing = pages.Chart(
+        x_label="bearing the wind comes from (degrees)" if case.by_bearing
+        else "direction the stream goes to (degrees)",
+        y_label=f"{table.names[place]}: {label}{unit}",
+        lines=(pages.Line(x, y, low=low, high=high),),
+        x_limits=tuple(limits),
+        y_limits=pages.value_limits(shown, 0.0, least),
+        x_step=step,
+        x_words=pages.angle_words,
+        spans=tuple(spans),
+        limit=reading.limit,
+    )
+    described = (
+        f"{table.names[place]}: {label} against the {_kind(case)}; worst "
+        f"{_worst(table, reading, table.trust[:, place])}."
+    )
+    return pages.chart(drawing, described)
+
+
+def _budgets(case, table, budget):
+    """Where the uncertainty of corrected readings comes from."""
+    if budget is None:
+        return pages.paragraphs(
+            "The case states no tolerances: a table [uncertainty] in it, with those of the booms, "
+            "the alignment and the calibration, gives the uncertainty of the corrected speed and "
+            "direction, and its budget."
+        )
+    found = [
+        (place, reading, _expanded(budget, place, reading))
+        for place in range(len(table.names))
+        for reading in readings(case, table, place)
+    ]
+    found = [entry for entry in found if entry[2] is not None]
+    if not found:
+        return pages.paragraphs("No reading can be corrected here: there is no uncertainty.")
+    rows = [_uncertainty_row(table, budget, *entry) for entry in found]
+    text = pages.paragraphs(
+        "Of the speed and direction once corrected by this survey, combined to first order as "
+        "JCGM 100 (GUM) asks; the scatter of the record itself is not in it."
+    )
+    text += pages.table(
+        f"Expanded uncertainty (k = 2, about 95 percent) over the trusted {_kind(case)}s.",
+        ["Sensor", "Reading", "Unit", "Least", "Middle", "Greatest", "Greatest at",
+         "Greatest part, by sector"],
+        rows, numbers=(3, 4, 5, 6),
+    )
+    chosen = [entry for entry in found if entry[0] < MOST_BUDGETS]
+    tables = [_budget(case, table, budget, *entry) for entry in chosen]
+    if len(chosen) < len(found):
+        tables.append(pages.paragraphs(
+            f"The budgets of the first {MOST_BUDGETS} sensors are printed; ob.uncertainty has all."
+        ))
+    return text + "\n".join(tables)
+
+
+def _uncertainty_row(table, budget, place, reading, expanded):
+    dominant = budget.dominant(table.names[place], reading.name)
+    dominant = np.where(np.isfinite(expanded), dominant, "")
+    parts = [
+        f"{source}: {_sectors(table, dominant == source)}"
+        for source in dict.fromkeys(dominant[dominant != ""])
+    ]
+    return [
+        table.names[place], reading.name, reading.unit,
+        *(f"{figure(expanded):.2f}" for figure in (np.nanmin, np.nanmedian, np.nanmax)),
+        f"{table.angles[np.nanargmax(expanded)]:g}",
+        "; ".join(parts),
+    ]
+
+
+def _budget(case, table, budget, place, reading, expanded):
+    """The budget of one reading at the prevailing wind, or where the uncertainty is greatest."""
+    name, row = table.names[place], np.nanargmax(expanded)
+    where = "where it is greatest"
+    if case.prevailing is not None:
+        near = np.abs((table.angles - case.prevailing[0] + 180.0) % 360.0 - 180.0).argmin()
+        if np.isfinite(expanded[near]):
+            row, where = near, "the prevailing one"
+    factor = 100.0 if reading.name == "speed" else 1.0
+    rows = [
+        [
+            line["source"], line["distribution"], _input(case, line),
+            f"{abs(factor * line['contribution']):.3f}", f"{100 * line['share']:.1f}",
+        ]
+        for line in budget.budget(name, table.angles[row], reading.name)
+    ]
+    caption = (
+        f"Budget of the {reading.name} of {name} at {_kind(case)} {table.angles[row]:g}, {where}: "
+        f"expanded uncertainty {expanded[row]:.2f} {reading.unit}."
+    )
+    heads = ["Source", "Distribution", "Standard uncertainty",
+             f"Contribution ({reading.unit})", "Share of the variance (percent)"]
+    return pages.table(caption, heads, rows, numbers=(2, 3, 4))
+
+
+def _input(case, line):
+    """The standard uncertainty of an input in the unit of its own."""
+    value, unit = line["standard_uncertainty"], line["unit"]
+    if line["source"] in ("numerical error", "between the table's angles"):
+        return "from the table"
+    if unit == "1":
+        return f"{100 * value:.3g} percent"
+    return f"{value:.3g} {case.length_unit if unit == 'length' else unit}"
+
+
+def _rerun(case):
+    name = Path(case.file).name
+    bodies = pages.bullets(_body_line(body) for body in case.bodies)
+    text = pages.paragraphs(
+        f"Save what follows as {name} and run: offbody survey {name} --out FOLDER "
+        f"(offbody {__version__}). Files of points that it names are not repeated here."
+    )
+    return bodies + text + pages.verbatim(case.text)

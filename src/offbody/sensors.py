@@ -7,17 +7,27 @@ Every sensor that stands in the flow offers the same few things, and the survey 
 ``direct``, ``turned``   (m,) complex: with velocities V = u + i v at the samples, the sensed vector
                          is the sum of direct V + turned conj(V), as any linear reading is,
 ``centre``               (2,) the place that stands for the whole sensor,
-``meets``                whether its path or disc touches a wall.
+``meets``                whether its path or disc touches a wall,
+``moved``                the same sensor elsewhere,
+
+and, where they differ from those of ``Standing``,
+
+``heading``              (m,) real: the sum of heading V is the vector whose direction is sensed,
+                         where it is not the one whose length is,
+``averages_speed``       whether it senses the mean of |V| in place of the length of the mean,
+``nose``                 degrees: where a stream that meets it head on goes to,
+``yaw_range``            (least, greatest) yaw on that axis which it can read, in degrees.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache, cached_property
 from typing import ClassVar
 
 import numpy as np
 
-from offbody.checks import as_number, as_point, nearest_name
+from offbody.checks import as_number, as_point, as_reals, nearest_name
 from offbody.errors import InputError
+from offbody.segments import crosses
 
 # Measured on a circle of radius a in a stream, greatest error of the mean over all directions as a
 # share of the undisturbed speed. Path of length L passing at a clearance g: 7e-13 for L = 4 a,
@@ -32,11 +42,24 @@ DISC_ANGLES = 20
 
 LEAST_CROSSING = 10.0  # degrees between paths: below it an error of a path grows sixfold
 
+# Degrees either way: common practice has the total pressure of a blunt tube within 1 percent of the
+# dynamic pressure, so 0.5 percent of the speed, up to about 10 to 15 degrees of yaw.
+PITOT_YAW = 12.0
+
 READS = ("both", "direction", "speed")
 
 
+class Standing:
+    """What most sensors that stand in the flow have in common."""
+
+    heading: ClassVar = None
+    averages_speed: ClassVar = False
+    nose: ClassVar = None
+    yaw_range: ClassVar = (-np.inf, np.inf)
+
+
 @dataclass(frozen=True)
-class PointSensor:
+class PointSensor(Standing):
     """The velocity vector at a point.
 
     Parameters
@@ -90,9 +113,13 @@ class PointSensor:
         """False: a point has no extent; whether it lies inside a body shows in the flow itself."""
         return False
 
+    def moved(self, x, y):
+        """The same sensor, moved by x and y."""
+        return replace(self, x=self.x + x, y=self.y + y)
+
 
 @dataclass(frozen=True)
-class PathSensor:
+class PathSensor(Standing):
     """The velocity component along the path between two transducers, averaged over the path.
 
     Parameters
@@ -170,18 +197,15 @@ class PathSensor:
 
     def meets(self, wall):
         """Whether the path crosses a closed wall, (n,) complex."""
-        start, end = complex(*self.start), complex(*self.end)
-        # In the frame with start at 0 and end at 1 the path is the real axis from 0 to 1.
-        here = (wall - start) / (end - start)
-        there = np.roll(here, -1)
-        crossing = (here.imag > 0) != (there.imag > 0)
-        here, there = here[crossing], there[crossing]
-        place = here.real - here.imag * (there.real - here.real) / (there.imag - here.imag)
-        return bool(np.any((place >= 0) & (place <= 1)))
+        return crosses(self.start, self.end, wall)
+
+    def moved(self, x, y):
+        """The same sensor, moved by x and y."""
+        return replace(self, start=np.add(self.start, (x, y)), end=np.add(self.end, (x, y)))
 
 
 @dataclass(frozen=True)
-class CrossedPaths:
+class CrossedPaths(Standing):
     """Two or three paths combined to a vector, as an ultrasonic anemometer does.
 
     The sensed vector is the one whose components along the paths fit the paths' mean components
@@ -268,9 +292,13 @@ class CrossedPaths:
         """Whether one of the paths crosses a closed wall, (n,) complex."""
         return any(path.meets(wall) for path in self.paths)
 
+    def moved(self, x, y):
+        """The same sensor, moved by x and y."""
+        return replace(self, paths=tuple(path.moved(x, y) for path in self.paths))
+
 
 @dataclass(frozen=True)
-class DiscSensor:
+class DiscSensor(Standing):
     """The speed averaged over a disc (a cup rotor) and the direction of the mean vector (a vane).
 
     Parameters
@@ -309,6 +337,7 @@ class DiscSensor:
     reads: str = "both"
 
     kind: ClassVar[str] = "disc"
+    averages_speed: ClassVar[bool] = True
 
     def __post_init__(self):
         _settle(
@@ -346,6 +375,287 @@ class DiscSensor:
         # The nearest place of each straight piece, as a share of the piece.
         share = np.clip(-(here * side.conj()).real / np.abs(side) ** 2, 0, 1)
         return bool(np.abs(here + share * side).min() < self.radius)
+
+    def moved(self, x, y):
+        """The same sensor, moved by x and y."""
+        return replace(self, centre=np.add(self.centre, (x, y)))
+
+
+@dataclass(frozen=True)
+class PitotTube(Standing):
+    """The speed that a Pitot-static tube's total minus static pressure reads.
+
+    Parameters
+    ----------
+    x, y : float
+        Where its nose is, in the caller's unit of length.
+    axis : float
+        Where a stream that meets it head on goes to: degrees counter-clockwise from +x.
+    static_behind : float
+        Distance of the static holes behind the nose, in the same unit.
+    greatest_yaw : float
+        Up to which it reads the speed, degrees either way of its axis.
+    name : str, optional
+        What tables and pictures call it; by default its kind and its place in the table.
+
+    Raises
+    ------
+    ob.InputError
+        If a number is not finite, the holes lie ahead of the nose, the greatest yaw is not between
+        0 and 90, or the name cannot be used.
+
+    Notes
+    -----
+    The total pressure is the same everywhere outside wakes, so that the tube reads the speed at its
+    static holes. Up to the greatest yaw its own error is left out: common practice has it within 1
+    percent of the dynamic pressure up to about 10 to 15 degrees. Beyond it a survey calls it
+    ``saturated`` and refuses it trust (a rule of this project). The yaw is that at the nose.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> mast = ob.solve(ob.circle(0.3))
+    >>> table = ob.survey(mast, ob.PitotTube(-0.4, 0.4, axis=0.0), directions=[0.0, 30.0])
+    >>> table.yaw.round(1), table.trust
+    (array([[ 4.1],
+           [29.2]]), array([[ True],
+           [False]]))
+    """
+
+    x: float
+    y: float
+    axis: float
+    static_behind: float = 0.0
+    greatest_yaw: float = PITOT_YAW
+    name: str | None = None
+
+    kind: ClassVar[str] = "Pitot tube"
+    reads: ClassVar[str] = "speed"
+    weights: ClassVar = np.array([0.0, 1.0])
+    direct: ClassVar = weights
+    turned: ClassVar = np.zeros(2)
+    heading: ClassVar = np.array([1.0, 0.0])
+
+    def __post_init__(self):
+        _settle(
+            self,
+            x=as_number("x", self.x),
+            y=as_number("y", self.y),
+            axis=as_number("axis", self.axis),
+            static_behind=as_number("static_behind", self.static_behind, least=0),
+            greatest_yaw=as_number(
+                "greatest_yaw", self.greatest_yaw, positive=True, greatest=90
+            ),
+        )
+        _check_name(self.name)
+
+    @property
+    def nose(self):
+        """Where a stream that meets it head on goes to, degrees."""
+        return self.axis
+
+    @property
+    def yaw_range(self):
+        """Least and greatest yaw at which it reads the speed, degrees."""
+        return -self.greatest_yaw, self.greatest_yaw
+
+    @property
+    def centre(self):
+        """Where the static holes are, (2,)."""
+        return self.points[1]
+
+    @cached_property
+    def points(self):
+        """The nose and the static holes, (2, 2)."""
+        along = np.radians(self.axis)
+        behind = self.static_behind * np.array([np.cos(along), np.sin(along)])
+        return np.array([self.x, self.y]) + np.array([0.0 * behind, behind])
+
+    def meets(self, wall):
+        """Whether the tube between nose and static holes crosses a closed wall, (n,) complex."""
+        return self.static_behind > 0 and crosses(*self.points, wall)
+
+    def moved(self, x, y):
+        """The same sensor, moved by x and y."""
+        return replace(self, x=self.x + x, y=self.y + y)
+
+
+@dataclass(frozen=True)
+class MultiHoleProbe(Standing):
+    """Speed, direction and yaw on its axis that a multi-hole probe reads, until it saturates.
+
+    Parameters
+    ----------
+    x, y : float
+        Where its tip is, in the caller's unit of length.
+    axis : float
+        Where a stream that meets it head on goes to: degrees counter-clockwise from +x.
+    hole_angles : sequence of float
+        Of the holes in the plane of the flow: by how many degrees of yaw, counter-clockwise, a
+        stream meets each of them head on; at least one on either side of the axis.
+    name : str, optional
+        What tables and pictures call it; by default its kind and its place in the table.
+
+    Raises
+    ------
+    ob.InputError
+        If a number is not finite, the holes do not lie on both sides within 90 degrees, or the
+        name cannot be used.
+
+    Notes
+    -----
+    The probe is taken as a point, its tip. It saturates, and a survey refuses it trust, where the
+    yaw exceeds that of its outermost hole: there the highest pressure is no longer between holes,
+    and one difference of pressures belongs to two yaws (a rule of this project; a calibration may
+    reach less far).
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> mast = ob.solve(ob.circle(0.3))
+    >>> probe = ob.MultiHoleProbe(-0.4, 0.4, axis=0.0, hole_angles=(-45.0, 0.0, 45.0))
+    >>> table = ob.survey(mast, probe, directions=[0.0, 30.0, 60.0])
+    >>> table.yaw[:, 0].round(1), table.saturated[:, 0]
+    (array([ 4.1, 29.2, 54.7]), array([False, False,  True]))
+    """
+
+    x: float
+    y: float
+    axis: float
+    hole_angles: tuple[float, ...]
+    name: str | None = None
+
+    kind: ClassVar[str] = "multi-hole probe"
+    reads: ClassVar[str] = "both"
+    weights: ClassVar = np.ones(1)
+    direct: ClassVar = np.ones(1)
+    turned: ClassVar = np.zeros(1)
+
+    def __post_init__(self):
+        _settle(
+            self,
+            x=as_number("x", self.x),
+            y=as_number("y", self.y),
+            axis=as_number("axis", self.axis),
+            hole_angles=_hole_angles(self.hole_angles),
+        )
+        _check_name(self.name)
+
+    @property
+    def nose(self):
+        """Where a stream that meets it head on goes to, degrees."""
+        return self.axis
+
+    @property
+    def yaw_range(self):
+        """Least and greatest yaw that it can read, degrees."""
+        return min(self.hole_angles), max(self.hole_angles)
+
+    @property
+    def centre(self):
+        """The tip, (2,)."""
+        return np.array([self.x, self.y])
+
+    @cached_property
+    def points(self):
+        """The one sample point, (1, 2)."""
+        return self.centre[None]
+
+    def meets(self, wall):
+        """False: a tip has no extent; whether it lies inside a body shows in the flow itself."""
+        return False
+
+    def moved(self, x, y):
+        """The same sensor, moved by x and y."""
+        return replace(self, x=self.x + x, y=self.y + y)
+
+
+@dataclass(frozen=True)
+class CupAndVane(Standing):
+    """The speed at a cup and the direction at a vane, read as one instrument.
+
+    Parameters
+    ----------
+    cup, vane : PointSensor or DiscSensor
+        What reads the speed, and what reads the direction; names given to them are not used, nor
+        is what they say that they read.
+    name : str, optional
+        What tables and pictures call it; by default its kind and its place in the table.
+
+    Raises
+    ------
+    ob.InputError
+        If the cup or the vane is no point or disc, or the name cannot be used.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> mast = ob.solve(ob.circle(0.3))
+    >>> pair = ob.CupAndVane(ob.DiscSensor((0.0, 2.0), 0.1), ob.PointSensor(0.0, 1.0))
+    >>> table = ob.survey(mast, pair, directions=[0.0, 45.0])
+    >>> table.speed_ratio.round(4), table.direction_error.round(2)
+    (array([[1.0056],
+           [1.    ]]), array([[0.  ],
+           [1.29]]))
+    """
+
+    cup: PointSensor | DiscSensor
+    vane: PointSensor | DiscSensor
+    name: str | None = None
+
+    kind: ClassVar[str] = "cup and vane"
+    reads: ClassVar[str] = "both"
+
+    def __post_init__(self):
+        for field in ("cup", "vane"):
+            if not isinstance(getattr(self, field), PointSensor | DiscSensor):
+                raise InputError(
+                    f"{field} must be a PointSensor or a DiscSensor, got {getattr(self, field)!r}"
+                )
+        _check_name(self.name)
+
+    @property
+    def averages_speed(self):
+        """Whether the cup is a disc."""
+        return self.cup.averages_speed
+
+    @property
+    def centre(self):
+        """The cup's place, (2,)."""
+        return np.array(self.cup.centre)
+
+    @cached_property
+    def points(self):
+        """Sample points of the cup, then of the vane, (m, 2)."""
+        return np.concatenate([self.cup.points, self.vane.points])
+
+    @cached_property
+    def weights(self):
+        """Shares of the cup, and none of the vane, (m,)."""
+        return np.concatenate([self.cup.weights, 0.0 * self.vane.weights])
+
+    @cached_property
+    def heading(self):
+        """Shares of the vane, and none of the cup, (m,)."""
+        return np.concatenate([0.0 * self.cup.weights, self.vane.weights])
+
+    @property
+    def direct(self):
+        """With ``turned``: the cup's mean vector, (m,)."""
+        return self.weights
+
+    @property
+    def turned(self):
+        """See ``direct``."""
+        return np.zeros(self.weights.shape)
+
+    def meets(self, wall):
+        """Whether a closed wall, (n,) complex, comes within the cup or the vane."""
+        return self.cup.meets(wall) or self.vane.meets(wall)
+
+    def moved(self, x, y):
+        """The same pair, both moved by x and y."""
+        return replace(self, cup=self.cup.moved(x, y), vane=self.vane.moved(x, y))
 
 
 @dataclass(frozen=True)
@@ -392,7 +702,10 @@ class WallPort:
         _check_name(self.name)
 
 
-SENSORS = (PointSensor, PathSensor, CrossedPaths, DiscSensor, WallPort)
+SENSORS = (
+    PointSensor, PathSensor, CrossedPaths, DiscSensor, PitotTube, MultiHoleProbe, CupAndVane,
+    WallPort,
+)
 
 
 def _settle(sensor, **fields):
@@ -413,6 +726,16 @@ def _check_name(name):
 def _check_reads(reads):
     if reads not in READS:
         raise InputError(f"reads = {reads!r} is not known; {nearest_name(reads, READS)}")
+
+
+def _hole_angles(angles):
+    angles = as_reals("hole_angles", angles)
+    if angles.ndim != 1 or not angles.size or not -90 < angles.min() < 0 < angles.max() < 90:
+        raise InputError(
+            f"hole_angles = {angles.tolist()}: give a list with at least one angle on either side "
+            "of the axis, all between -90 and 90 degrees"
+        )
+    return tuple(angles.tolist())
 
 
 def _as_paths(paths):

@@ -8,6 +8,7 @@ import numpy as np
 
 from offbody.arcs import Arcs
 from offbody.bearings import from_bearing, to_bearing, within_turn
+from offbody.booms import Boom
 from offbody.checks import as_body, as_directions, as_number
 from offbody.compressibility import LOW_SPEED, as_mach, critical_mach
 from offbody.errors import InputError
@@ -22,7 +23,9 @@ SQUARE_TO_PATH = 0.05  # cosine below which a ratio of components along a path s
 WIDEST_STEP = 15.0  # degrees over which a sector goes on: none can step across a lee
 
 
-def survey(model, sensors, directions=None, *, bearings=None, reynolds=None, mach=None):
+def survey(
+    model, sensors, directions=None, *, bearings=None, booms=None, reynolds=None, mach=None
+):
     """Table of what every sensor reads in every direction, against the undisturbed stream.
 
     Parameters
@@ -30,13 +33,17 @@ def survey(model, sensors, directions=None, *, bearings=None, reynolds=None, mac
     model : Model
         What ``ob.solve`` returned.
     sensors : sensor or sequence of sensors
-        PointSensor, PathSensor, CrossedPaths, DiscSensor or WallPort, in any mixture; k of them.
+        PointSensor, PathSensor, CrossedPaths, DiscSensor, PitotTube, MultiHoleProbe, CupAndVane
+        or WallPort, in any mixture; k of them.
     directions : array_like of shape (n,), optional
         Where the stream goes TO, degrees counter-clockwise from +x. By default 0, 1 ... 359 in
         an open stream, and 0 and 180 where walls bound the stream.
     bearings : array_like of shape (n,), optional
         In place of ``directions``: where the wind comes FROM, degrees clockwise from north. The
         table's direction errors are then clockwise positive, as in a record.
+    booms : Boom or sequence, optional
+        Per sensor, None or the boom that it stands above, whose own section then counts too; one
+        boom, or none, for all.
     reynolds : float or sequence, optional
         Of the bodies, as ``ob.separation`` takes it: wakes then start where it says, in place of
         the points widest across the stream or those of the model's own wakes.
@@ -52,8 +59,9 @@ def survey(model, sensors, directions=None, *, bearings=None, reynolds=None, mac
     ------
     ob.InputError
         If both directions and bearings are given or one of them cannot be used; if there is no
-        sensor, a sensor is of no known kind, or two have one name; if a sensor lies inside a body
-        or below the ground, or a body lies in a path or a disc: such a sensor could never read.
+        sensor, a sensor is of no known kind, or two have one name; if a boom is none, or its
+        sensor a port; if a sensor lies inside a body or below the ground, or a body lies in a path
+        or a disc: such a sensor could never read.
 
     Examples
     --------
@@ -70,7 +78,10 @@ def survey(model, sensors, directions=None, *, bearings=None, reynolds=None, mac
     angles, by_bearing = _as_angles(model, directions, bearings)
     samples = _Samples.of(model, sensors)
     mach = None if mach is None else as_mach(mach)
-    table = Survey(model, sensors, _names(sensors), angles, by_bearing, samples, reynolds, mach)
+    booms = _as_booms(booms, sensors)
+    table = Survey(
+        model, sensors, _names(sensors), angles, by_bearing, booms, samples, reynolds, mach
+    )
     _check_between_walls(table)
     _check_clear_of_bodies(table)
     return table
@@ -110,9 +121,14 @@ class Survey:
         Whether the table was asked for by bearings.
     angles : (n,) array
         The table's own angles: the bearings if it was asked for by bearings, else the directions.
+    booms : tuple of Boom or None
+        That the sensors stand above.
     speed_ratio : array
         Sensed over undisturbed speed; for a path, the ratio of the components along it, NaN where
         the stream is within three degrees of square to it.
+    body_speed_ratio, boom_speed_ratio : arrays
+        Its two factors: what the bodies make of the undisturbed speed, and what the sensor's own
+        boom makes of that (1 where there is none).
     direction_error : array
         Sensed minus undisturbed direction, degrees in (-180, 180]; counter-clockwise positive, or
         clockwise positive if the table was asked for by bearings.
@@ -120,9 +136,17 @@ class Survey:
         For paths: sensed minus undisturbed component along the path, over the undisturbed speed.
     static_error : array
         Pressure coefficient at the sensor, the mean over a path or a disc.
-    speed_ratio_gradient : (n, k, 2) array
-        Change of the speed ratio per unit of length by which the sensor as a whole is misplaced
-        in x and in y.
+    yaw : array
+        For a tube or a probe: of the flow on its axis, degrees, signed as the direction error.
+    saturated : array of bool
+        Whether that yaw is beyond what it can read.
+    speed_ratio_gradient, direction_error_gradient : (n, k, 2) arrays
+        Change of the speed ratio and of the direction error, in degrees, per unit of length by
+        which the sensor as a whole is misplaced in x and in y.
+    numerical_error : array
+        Half-width, over the undisturbed speed, within which the panels leave the velocity sensed:
+        the model's estimate at the samples, summed by their weights in the reading; at a port, of
+        the wall speed.
     in_wake, doubtful : arrays of bool
         Whether the sensor reaches into the wake of a body, or only into the margin round one.
     trust : array of bool
@@ -146,7 +170,8 @@ class Survey:
        downstream of the line that joins the two points where the flow leaves its wall, and within
        the strip between them, which widens by 10 degrees on either side. They are those of
        ``ob.separation`` if a Reynolds number is given, else those of its wake (``ob.Wake``), else
-       the points widest across the stream.
+       the points widest across the stream. Bracing has such a lee too, from end to end;
+    3. to a tube or a probe that is ``saturated``.
 
     A margin of another 10 degrees, from a tenth of the breadth ahead of that line, is trusted and
     marked doubtful. A body with a sharp edge within its incidence has only a thin wake: left out,
@@ -167,6 +192,7 @@ class Survey:
     names: tuple
     angles: np.ndarray
     by_bearing: bool
+    booms: tuple
     _samples: object
     _reynolds: object = None
     _mach: float | None = None
@@ -180,6 +206,8 @@ class Survey:
             "1",
             "Sensed over undisturbed speed; for a path, of the components along it.",
         ),
+        ("body_speed_ratio", "1", "Its factor by the bodies."),
+        ("boom_speed_ratio", "1", "Its factor by the sensor's own boom; 1 without one."),
         (
             "direction_error",
             "degrees",
@@ -193,6 +221,12 @@ class Survey:
         ),
         ("static_error", "1", "Pressure coefficient at the sensor."),
         (
+            "yaw",
+            "degrees",
+            "For a tube or a probe: of the flow on its axis, signed as direction_error.",
+        ),
+        ("saturated", "", "True where that yaw is beyond what it can read."),
+        (
             "speed_ratio_gradient_x",
             "1/length",
             "Change of the speed ratio per unit of length by which the sensor moves along x.",
@@ -201,6 +235,11 @@ class Survey:
             "speed_ratio_gradient_y",
             "1/length",
             "Change of the speed ratio per unit of length by which the sensor moves along y.",
+        ),
+        (
+            "numerical_error",
+            "1",
+            "Half-width within which the panels leave the velocity, over the undisturbed speed.",
         ),
         ("in_wake", "", "True where the sensor reaches into the wake of a body."),
         ("doubtful", "", "True where it only reaches into the margin round a wake."),
@@ -222,15 +261,19 @@ class Survey:
 
     @_column
     def speed_ratio(self):
-        return self._where_read("speed", self._speed_of(self._sensed, self._velocity))
+        return self._speed_of(self._velocity, self._velocity)
+
+    @_column
+    def body_speed_ratio(self):
+        return self._speed_of(self._free_of_booms, self._free_of_booms)
+
+    @_column
+    def boom_speed_ratio(self):
+        return self.speed_ratio / self.body_speed_ratio
 
     @_column
     def direction_error(self):
-        turn = self._sensed * self._undisturbed.conj()
-        degrees = np.where(turn == 0, np.nan, np.angle(turn, deg=True))
-        degrees = -degrees if self.by_bearing else degrees
-        # A stream turned back is 180 degrees off, whichever way the rounding went.
-        return self._where_read("direction", np.where(degrees == -180, 180.0, degrees))
+        return self._where_read("direction", self._turn_from(self._undisturbed))
 
     @_column
     def component_error(self):
@@ -248,12 +291,37 @@ class Survey:
         return pressure
 
     @_column
+    def yaw(self):
+        noses = [np.nan if s.kind == "port" or s.nose is None else s.nose for s in self.sensors]
+        return self._turn_from(np.exp(1j * np.radians(noses)))
+
+    @_column
+    def saturated(self):
+        yaw = -self.yaw if self.by_bearing else self.yaw
+        least, greatest = self._samples.yaw_ranges.T
+        return (yaw < least) | (yaw > greatest)
+
+    @_column
     def speed_ratio_gradient(self):
+        changes = [self._speed_of(self._velocity, change) for change in self._changes]
+        return np.stack(changes, axis=-1)
+
+    @_column
+    def direction_error_gradient(self):
+        with np.errstate(divide="ignore", invalid="ignore"):
+            turns = [
+                np.degrees((self._samples.read_heading(change) / self._heading).imag)
+                for change in self._changes
+            ]
+        turns = np.stack(turns, axis=-1)
+        return self._where_read("direction", -turns if self.by_bearing else turns)
+
+    @_column
+    def numerical_error(self):
         samples = self._samples
-        gradient = self.model.velocity_gradient(samples.points, self.directions)
-        moved = [_as_complex(gradient[..., axis]) for axis in (0, 1)]
-        changes = [self._speed_of(samples.read(change), change) for change in moved]
-        return self._where_read("speed", np.stack(changes, axis=-1))
+        error = self.model.numerical_error(samples.points, self.directions)
+        shares = [np.abs(direct) + np.abs(turned) for direct, turned in samples.readings]
+        return np.maximum(*(samples.gather(share * error) for share in shares))
 
     @_column
     def in_wake(self):
@@ -265,12 +333,18 @@ class Survey:
 
     @_column
     def trust(self):
-        return ~(self._astray.any(axis=0)[:, None] | self.in_wake)
+        return ~(self._astray.any(axis=0)[:, None] | self.in_wake | self.saturated)
 
     @_column
     def reason(self):
         reasons = np.full(self.trust.shape, "", dtype=object)
         # The last written is the first that applies.
+        for row, place in np.argwhere(self.saturated):
+            limit = self._samples.yaw_ranges[place]
+            reasons[row, place] = f"yaw beyond {limit[0]:g} to {limit[1]:g} degrees"
+        for number in reversed(range(len(self.model.bracings))):
+            lee = self._wakes[len(self.model.outlines) + number] == IN_WAKE
+            reasons[lee] = f"in the lee of bracing {number}"
         for body in reversed(range(len(self.model.outlines))):
             reasons[self._wakes[body] == IN_WAKE] = f"in the lee of body {body}"
         for body in reversed(range(len(self.model.outlines))):
@@ -363,9 +437,10 @@ class Survey:
         ('point 1', True)
         """
         names = [name for name, _, _ in self.columns]
-        tables = [self.speed_ratio, self.direction_error, self.component_error, self.static_error]
-        tables += [*np.moveaxis(self.speed_ratio_gradient, -1, 0)]
-        tables += [self.in_wake, self.doubtful, self.trust, self.reason]
+        tables = [self.speed_ratio, self.body_speed_ratio, self.boom_speed_ratio]
+        tables += [self.direction_error, self.component_error, self.static_error]
+        tables += [self.yaw, self.saturated, *np.moveaxis(self.speed_ratio_gradient, -1, 0)]
+        tables += [self.numerical_error, self.in_wake, self.doubtful, self.trust, self.reason]
         angles = zip(self.directions.tolist(), self.bearings.tolist(), strict=True)
         tables = [table.tolist() for table in tables]
         for (direction, bearing), *lines in zip(angles, *tables, strict=True):
@@ -373,9 +448,31 @@ class Survey:
                 yield dict(zip(names, (sensor, direction, bearing, *values), strict=True))
 
     @cached_property
+    def _free_of_booms(self):
+        """Velocity u + i v at every sample, (n, m), without the sensors' own booms."""
+        return _as_complex(self.model.velocity(self._samples.points, self.directions))
+
+    @cached_property
     def _velocity(self):
         """Velocity u + i v at every sample, (n, m)."""
-        return _as_complex(self.model.velocity(self._samples.points, self.directions))
+        return self._past_booms(self._free_of_booms)
+
+    @cached_property
+    def _changes(self):
+        """Change of it, (n, m), per unit of length along x and along y."""
+        gradient = self.model.velocity_gradient(self._samples.points, self.directions)
+        return [self._past_booms(_as_complex(gradient[..., axis])) for axis in (0, 1)]
+
+    def _past_booms(self, change):
+        """Velocities or their changes at the samples past the boom of each sensor."""
+        if not any(self.booms):
+            return change
+        change = change.copy()
+        for place, boom in enumerate(self.booms):
+            if boom is not None:
+                here = self._samples.owner == place
+                change[:, here] = boom.passed(self._free_of_booms[:, here], change[:, here])
+        return change
 
     @cached_property
     def _undisturbed(self):
@@ -388,26 +485,38 @@ class Survey:
         return self._samples.read(self._velocity)
 
     @cached_property
-    def _speed_axes(self):
-        """Along which the sensed vectors, and their changes, are measured as speeds, (n, k)."""
-        axes = _unit(self._sensed)
-        paths = self._samples.are("path")
+    def _heading(self):
+        """The vectors whose direction is sensed, u + i v, (n, k)."""
+        return self._samples.read_heading(self._velocity)
+
+    def _turn_from(self, axes):
+        """Degrees by which the headings are turned from axes, (n, k) or (k,), signed as errors."""
+        turn = self._heading * axes.conj()
+        degrees = np.where(turn == 0, np.nan, np.angle(turn, deg=True))
+        degrees = -degrees if self.by_bearing else degrees
+        # A stream turned back is 180 degrees off, whichever way the rounding went.
+        return np.where(degrees == -180, 180.0, degrees)
+
+    def _speed_of(self, velocity, change):
+        """Ratio to the undisturbed speed, (n, k), of velocities at the samples, or their change.
+
+        Vectors sensed, and their changes, count along the vector sensed; NaN where no speed is.
+        """
+        samples = self._samples
+        axes = _unit(samples.read(velocity))
+        paths = samples.are("path")
         if paths.any():
-            along = self._samples.axes[paths]
+            along = samples.axes[paths]
             cosine = (_unit(self._undisturbed[:, paths]) * along.conj()).real
             cosine[np.abs(cosine) < SQUARE_TO_PATH] = np.nan
             # Its reading is compared with the undisturbed component, not with the whole speed.
             axes[:, paths] = along * (1 / cosine)
-        return axes
-
-    def _speed_of(self, sensed, velocity):
-        """Ratio to the undisturbed speed, (n, k), of the flow's own vectors or of their change."""
-        speed = (sensed * self._speed_axes.conj()).real
-        discs = self._samples.are("disc")
-        if discs.any():
-            mean = self._samples.weights * (velocity * _unit(self._velocity).conj()).real
-            speed[:, discs] = self._samples.gather(mean)[:, discs]
-        return speed / np.abs(self._undisturbed)
+        speed = (samples.read(change) * axes.conj()).real
+        averaging = [s.kind != "port" and s.averages_speed for s in self.sensors]
+        if any(averaging):
+            mean = samples.weights * (change * _unit(velocity).conj()).real
+            speed[:, averaging] = samples.gather(mean)[:, averaging]
+        return self._where_read("speed", speed / np.abs(self._undisturbed))
 
     def _where_read(self, quantity, values):
         """The values, NaN in the columns of sensors that do not read the quantity."""
@@ -441,12 +550,15 @@ class Survey:
 
     @cached_property
     def _wakes(self):
-        """Whether a sensor lies in the wake of each body, or in its margin, (bodies, n, k)."""
-        samples = self._samples
-        codes = np.stack([
-            samples.gather(self._codes(body), np.maximum)
-            for body in range(len(self.model.outlines))
-        ])
+        """Whether a sensor lies in the wake, or its margin, of each body, then of each bracing.
+
+        (bodies + bracings, n, k).
+        """
+        samples, points = self._samples, self._samples.points
+        codes = [self._codes(body) for body in range(len(self.model.outlines))]
+        for bracing in self.model.bracings:
+            codes.append(wake_codes(points, bracing.ends(self.directions), self.directions))
+        codes = np.stack([samples.gather(one, np.maximum) for one in codes])
         for place, sensor in enumerate(self.sensors):
             if sensor.kind == "port":
                 codes[sensor.body, self._in_lee(sensor), place] = IN_WAKE
@@ -535,12 +647,12 @@ class _Samples:
 
     points: np.ndarray  # (m, 2)
     weights: np.ndarray  # (m,)
-    direct: np.ndarray  # (m,)
-    turned: np.ndarray  # (m,)
+    readings: tuple  # (direct, turned) of speed and of direction, (m,) each
     owner: np.ndarray  # (m,) which sensor
     starts: np.ndarray  # (k,) first sample of each sensor
     centres: np.ndarray  # (k, 2)
     axes: np.ndarray  # (k,) complex, zero but for paths
+    yaw_ranges: np.ndarray  # (k, 2) degrees, counter-clockwise
     kinds: tuple
 
     @classmethod
@@ -551,15 +663,23 @@ class _Samples:
             for sensor in sensors
         ]
         counts = [len(sensor.points) for sensor in standing]
+        speed = [(sensor.direct, sensor.turned) for sensor in standing]
+        direction = [
+            reading if sensor.heading is None else (sensor.heading, 0.0 * sensor.heading)
+            for sensor, reading in zip(standing, speed, strict=True)
+        ]
         return cls(
             points=np.concatenate([sensor.points for sensor in standing]),
             weights=np.concatenate([sensor.weights for sensor in standing]),
-            direct=np.concatenate([sensor.direct for sensor in standing]),
-            turned=np.concatenate([sensor.turned for sensor in standing]),
+            readings=tuple(
+                tuple(np.concatenate(part) for part in zip(*reading, strict=True))
+                for reading in (speed, direction)
+            ),
             owner=np.repeat(np.arange(len(sensors)), counts),
             starts=np.cumsum([0, *counts[:-1]]),
             centres=np.array([sensor.centre for sensor in standing]),
-            axes=np.array([getattr(sensor, "axis", 0j) for sensor in standing]),
+            axes=np.array([s.axis if s.kind == "path" else 0j for s in standing]),
+            yaw_ranges=np.array([sensor.yaw_range for sensor in standing]),
             kinds=tuple(sensor.kind for sensor in sensors),
         )
 
@@ -569,7 +689,14 @@ class _Samples:
 
     def read(self, velocity):
         """Vectors sensed, (n, k), of velocities (or their changes) at the samples, (n, m)."""
-        return self.gather(self.direct * velocity + self.turned * velocity.conj())
+        return self._read(velocity, *self.readings[0])
+
+    def read_heading(self, velocity):
+        """The same of the vectors whose direction is sensed."""
+        return self._read(velocity, *self.readings[1])
+
+    def _read(self, velocity, direct, turned):
+        return self.gather(direct * velocity + turned * velocity.conj())
 
     def are(self, kind):
         """Which sensors are of a kind, (k,) bool."""
@@ -605,6 +732,23 @@ def _names(sensors):
                 "a name of its own"
             )
     return names
+
+
+def _as_booms(booms, sensors):
+    """One boom or None per sensor, or an InputError."""
+    if not isinstance(booms, list | tuple):
+        booms = [booms] * len(sensors)
+    if len(booms) != len(sensors):
+        raise InputError(
+            f"booms has {len(booms)} entries for {len(sensors)} sensors; give one, or None, for "
+            "each"
+        )
+    for place, (boom, sensor) in enumerate(zip(booms, sensors, strict=True)):
+        if boom is not None and not isinstance(boom, Boom):
+            raise InputError(f"booms[{place}] must be an ob.Boom or None, got {boom!r}")
+        if boom is not None and sensor.kind == "port":
+            raise InputError(f"booms[{place}] is given for a port, which stands on none: give None")
+    return tuple(booms)
 
 
 def _as_angles(model, directions, bearings):
