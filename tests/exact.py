@@ -383,7 +383,8 @@ class _RepeatedCircle(_Body):
             for j in range(count):   # t_k + A conj(t) + B t = given, as c = -conj(t)
                 a, b = regular(k, j + 2, far), regular(k, j + 2, mirror) + (j == k)
                 matrix[k, j], matrix[k, count + j] = b.real + a.real, a.imag - b.imag
-                matrix[count + k, j], matrix[count + k, count + j] = b.imag + a.imag, b.real - a.real
+                matrix[count + k, j] = b.imag + a.imag
+                matrix[count + k, count + j] = b.real - a.real
         t = mpmath.lu_solve(matrix, right)
         return onset, [first] + [-mpmath.mpc(t[k], -t[count + k]) for k in range(count)]
 
@@ -436,7 +437,7 @@ class CircleRow(_RepeatedCircle):
     pitch: float
     centre: complex = 0.0
     circulation: float = 0.0
-    terms: int = 32
+    terms: int = 24
 
     _reflection = None
 
@@ -461,7 +462,7 @@ class CircleInDuct(_RepeatedCircle):
     upper: float
     centre: complex = 0.0
     circulation: float = 0.0
-    terms: int = 32
+    terms: int = 24
 
     @property
     def _period(self):

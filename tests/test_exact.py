@@ -207,6 +207,59 @@ def test_circles_a_gap_of_many_radii_apart_are_each_as_if_alone():
                                atol=5e-12)
 
 
+REPEATED = (
+    exact.CircleRow(1.0, 4.0, 0.2 + 0.1j, 2.0),
+    exact.CircleInDuct(1.0, -2.0, 2.0),
+    exact.CircleInDuct(0.5, -1.0, 2.0, 0.3 + 0.2j, 1.1),
+)
+
+
+@pytest.mark.parametrize("circle", REPEATED)
+def test_a_repeated_circle_lets_no_flow_through_and_has_its_circulation(circle):
+    s = np.linspace(0, 1, 256, endpoint=False)
+    along = circle.velocity(circle.wall(s), 180.0) * circle.tangent(s)
+    # 24 multipoles, each 0.27 of the last, of speeds up to 3.
+    np.testing.assert_allclose(along.imag, 0, atol=1e-13)
+    np.testing.assert_allclose(along.real, circle.surface_speed(s, 180.0), rtol=1e-14)
+    around = 2 * np.pi * circle.radius * along.real.mean()
+    np.testing.assert_allclose(around, circle.circulation, rtol=0, atol=1e-14)
+
+
+@pytest.mark.parametrize("circle", REPEATED)
+def test_a_repeated_circle_repeats_and_is_analytic_between_itself_and_its_copies(circle):
+    points = circle.centre + np.array([1.2 + 0.1j, -1.4j, -3.0 + 0.5j]) * circle.radius
+    assert_mean_value(lambda z: circle.velocity(z, 180.0), points,
+                      np.array([0.15, 0.2, 1.0]) * circle.radius)
+    period = circle.pitch if isinstance(circle, exact.CircleRow) else (
+        2 * (circle.upper - circle.lower))
+    np.testing.assert_allclose(circle.velocity(points + 1j * period, 180.0),
+                               circle.velocity(points, 180.0), rtol=1e-13)
+
+
+@pytest.mark.parametrize("circle", REPEATED[1:])
+def test_a_circle_in_a_duct_lets_no_flow_through_the_walls_nor_moves_the_stream_far_away(circle):
+    along = np.linspace(-9, 9, 101)
+    for wall in (circle.lower, circle.upper):
+        np.testing.assert_allclose(circle.velocity(along + 1j * wall).imag, 0, atol=1e-15)
+    np.testing.assert_allclose(circle.velocity(np.array([-1e3, 1e3]) + 0j), 1, rtol=1e-15)
+
+
+@pytest.mark.parametrize("direction", [0.0, 30.0, 200.0])
+def test_a_row_of_circles_leaves_the_stream_far_upstream_as_given(direction):
+    circle = REPEATED[0]
+    upstream = -1e3 if np.cos(np.radians(direction)) > 0 else 1e3
+    np.testing.assert_allclose(circle.velocity(upstream + 0.3j, direction),
+                               np.exp(-1j * np.radians(direction)), rtol=0, atol=1e-15)
+
+
+def test_a_row_of_circles_far_apart_is_a_circle_alone():
+    row, alone = exact.CircleRow(1.0, 1e5, 0.2j, 0.7, terms=4), exact.Circle(1.0, 0.2j, 0.7)
+    points = alone.offset_points(np.linspace(0, 1, 9), 0.4)
+    # Half the row's turning, G/(2 pitch) = 3.5e-6, has happened at the circle, which at most
+    # doubles it.
+    np.testing.assert_allclose(row.velocity(points), alone.velocity(points), rtol=0, atol=7e-6)
+
+
 @pytest.mark.parametrize("place", [1.05 + 0.0j, -2 + 3j])
 def test_a_source_and_vortex_near_a_circle_send_nothing_through_it_nor_round_it(place):
     solution = exact.SingularityNearCircle(place, source=0.7, vortex=-1.1)

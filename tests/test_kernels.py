@@ -283,7 +283,7 @@ def one_panel(height, order, a=-0.4 + 0.3j, b=0.7 - 0.2j):
     return (
         np.array([a]), np.array([b]), normals[:1], normals[1:],
         m + h * (x + 1j * height * (1 - x * x)), h * slope / np.abs(h * slope),
-        np.abs(h * slope) * gauss, bulge, np.array([1e-10]), 3.0, abs(b - a),
+        np.abs(h * slope) * gauss, bulge, np.array([[0.0, 1e-10]]), 3.0, abs(b - a),
     )
 
 

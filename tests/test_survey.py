@@ -21,7 +21,7 @@ class ExactCircle:
     def __init__(self, radius=1.0):
         self.circle = Circle(radius)
         self.surroundings = ob.OpenStream()
-        self.wakes = (None,)
+        self.wakes, self.bracings = (None,), ()
         self.outlines = (SimpleNamespace(edge=None, name="exact circle"),)
         self.walls = [as_pairs(self.circle.wall(np.arange(200) / 200))]
 
@@ -556,7 +556,7 @@ def test_a_path_across_a_thin_body_is_refused_though_no_sample_lies_in_it():
 
 def test_a_sensor_below_the_ground_is_refused():
     grounded = ob.solve(ob.circle(2.0, centre=(0, 2)), ob.Ground())
-    with pytest.raises(ob.InputError, match=r"sensors\[0\].*below the ground Ground\(y=0.0\)"):
+    with pytest.raises(ob.InputError, match=r"sensors\[0\].*beyond the wall of Ground\(y=0.0\)"):
         ob.survey(grounded, ob.PathSensor((3, 1), (3, -0.1)))
 
 
@@ -584,7 +584,7 @@ def test_what_cannot_be_surveyed_is_refused_by_name(tube, arguments, options, me
 
 def test_a_direction_across_the_ground_is_refused():
     grounded = ob.solve(ob.circle(2.0, centre=(0, 2)), ob.Ground())
-    with pytest.raises(ob.InputError, match="along it"):
+    with pytest.raises(ob.InputError, match="the stream runs along x"):
         ob.survey(grounded, ob.PointSensor(0, 5), [90.0])
 
 

@@ -3,6 +3,8 @@
 from offbody._version import __version__
 from offbody.accuracy import Tolerance
 from offbody.bearings import from_bearing, to_bearing
+from offbody.booms import Boom
+from offbody.bracings import Bracing
 from offbody.compressibility import compressible_pressure, critical_mach
 from offbody.corrections import Corrected, Correction, Reason
 from offbody.errors import AccuracyWarning, InputError
@@ -18,7 +20,16 @@ from offbody.outlines import (
     read_outline,
 )
 from offbody.parallel import threads
-from offbody.sensors import CrossedPaths, DiscSensor, PathSensor, PointSensor, WallPort
+from offbody.sensors import (
+    CrossedPaths,
+    CupAndVane,
+    DiscSensor,
+    MultiHoleProbe,
+    PathSensor,
+    PitotTube,
+    PointSensor,
+    WallPort,
+)
 from offbody.separations import Separation, separation
 from offbody.surroundings import Duct, Ground, OpenStream, Row
 from offbody.surveys import Survey, survey
@@ -34,9 +45,12 @@ from offbody.wakes import Wake
 
 __all__ = [
     "AccuracyWarning",
+    "Boom",
+    "Bracing",
     "Corrected",
     "Correction",
     "CrossedPaths",
+    "CupAndVane",
     "DiscSensor",
     "Duct",
     "Ground",
@@ -44,10 +58,12 @@ __all__ = [
     "InputError",
     "Model",
     "MonteCarlo",
+    "MultiHoleProbe",
     "Normal",
     "OpenStream",
     "Outline",
     "PathSensor",
+    "PitotTube",
     "PointSensor",
     "Reason",
     "Rectangular",

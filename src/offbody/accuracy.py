@@ -1,9 +1,9 @@
 """How wrong a number is: the tolerance that a caller states, and the error that a model estimates.
 
-A solved density makes a flow that is exact but for what crosses the walls: the normal velocity left
-over at the nodes, where only the tangential one just inside was made zero. That leftover, solved for
-as if it were blown through the walls, gives the error's own field, surface speed and all, on and off
-the walls, for two more columns of the same factorisation.
+A solved density makes a flow that is exact but for what crosses the walls: the normal velocity
+left over at the nodes, where only the tangential one just inside was made zero. That leftover,
+solved for as if it were blown through the walls, gives the error's own field, surface speed and
+all, on and off the walls, for two more columns of the same factorisation.
 """
 
 from dataclasses import dataclass

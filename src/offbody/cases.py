@@ -13,6 +13,9 @@ A case is a TOML file. Every key, with [] round what may be left out:
     [prevailing_bearing]         one, or a list: the winds that the pictures show
     [speed], [speed_unit]        of the undisturbed stream; only ever printed
 
+    [climate]                    how often the wind blows from where: weights for the mounts
+    bearings, frequencies        the middles of the sectors, and a number for each, in any unit
+
     [surroundings]               left out: an open stream
     kind                         "open"
                                  "ground"     [y], its height, 0 if left out
@@ -34,6 +37,13 @@ A case is a TOML file. Every key, with [] round what may be left out:
     [circulation]                per unit speed of the stream, counter-clockwise positive
     [axis]                       where booms count from; left out: the middle of the body
 
+    [[bracing]]                  lattice members of one face, as drag spread along it
+    between                      the names of two bodies, from wall to wall on the line that joins
+                                 their axes; or start and end
+    drag_coefficient             per length of the face in a stream square to it: the share of the
+                                 face that members cover, times the drag coefficient of these
+    [name]                       "bracing 1", "bracing 2" ... if left out
+
     [[sensor]]
     kind                         "point"         reads, a position
                                  "disc"          reads, radius, a position (its centre)
@@ -41,14 +51,22 @@ A case is a TOML file. Every key, with [] round what may be left out:
                                                  position (its middle)
                                  "crossed_paths" paths = [{ start, end }, ...]; or path_length,
                                                  path_bearings, a position (their middle)
+                                 "cup_and_vane"  cup = { [radius], a position }, vane likewise
+                                 "pitot_tube"    a position (its nose), nose_bearing,
+                                                 [static_behind], [greatest_yaw]
+                                 "multi_hole_probe"  a position (its tip), nose_bearing,
+                                                 hole_angles, counter-clockwise from its axis
                                  "wall_port"     body, arc_fraction
     [name]                       "sensor 1", "sensor 2" ... if left out
     reads                        "speed", "direction" or "both"
     a position                   x and y; or a boom:
-    boom = { [body], bearing, length, from = "axis" or "face", [offset] }
+    boom = { [body], bearing, length, from = "axis" or "face", [offset], [diameter], [height],
+             [drag_coefficient] }
                                  bearing: where the boom points, seen from the body;
                                  offset: of the instrument to the left of the boom's end;
-                                 body may be left out where there is only one
+                                 diameter, height: of a tubular boom, and of the instrument above
+                                 its axis, for the boom's own part; body may be left out where
+                                 there is only one
 
     [panels]                     left out: laid by the library
     [count]                      one number, or one per body
@@ -75,7 +93,8 @@ A case is a TOML file. Every key, with [] round what may be left out:
 
 ``turned`` is in degrees, counter-clockwise: about the centre, the nose, or the origin of the
 points. A case says its angles one way: with ``direction`` in place of ``bearing`` in every key,
-or the other way round, never both. Tables in an error message count from one: ``body[2]`` is
+or the other way round, never both. ``nose_bearing`` is where a nose points, ``nose_direction`` where
+a stream that meets it head on goes to. Tables in an error message count from one: ``body[2]`` is
 the second ``[[body]]``.
 """
 
@@ -86,6 +105,7 @@ import re
 import tomllib
 from dataclasses import dataclass, field, replace
 from pathlib import Path
+from typing import NamedTuple
 
 import numpy as np
 from scipy.optimize import brentq
@@ -101,6 +121,8 @@ GRID_INTERVALS = 360  # along the longer side of the region, if the case does no
 MOST_NODES = 20_000_000
 READINGS = ("speed", "direction", "both")
 
+# As in "in the lee of bracing 0".
+_COUNTED_BRACING = re.compile(r"\bbracing (?P<number>\d+)$")
 # As in "the lee of body 0", "body 0 (circle ...)" and "bodies 0 (circle ...) and 1 (circle ...)".
 _COUNTED_BODY = re.compile(r"\b(?:body |bodies |(?P<before>and ))(?P<number>\d+)(?= \(|$)")
 _COUNTED_SENSOR = re.compile(r"\bsensors\[(\d+)\]")
@@ -117,6 +139,16 @@ class Body:
     circulation: float | None
 
 
+class Mount(NamedTuple):
+    """How a sensor is held: the polyline of its boom from its foot, and the boom's own section."""
+
+    line: np.ndarray | None
+    section: object
+
+
+UNMOUNTED = Mount(None, None)
+
+
 @dataclass(frozen=True)
 class Region:
     """Where the dense grid and the pictures lie, and for which winds; None: to be chosen."""
@@ -130,7 +162,11 @@ class Region:
 
 @dataclass(frozen=True)
 class Case:
-    """A case as read: angles stay in the case's own convention, told by ``by_bearing``."""
+    """A case as read: angles stay in the case's own convention, told by ``by_bearing``.
+
+    ``climate`` holds the middles of the sectors and their shares of one; ``booms`` the polyline of
+    each sensor's boom, from its foot, and ``boom_sections`` its ``ob.Boom``, or None.
+    """
 
     file: str
     entries: dict = field(repr=False)
@@ -141,10 +177,13 @@ class Case:
     by_bearing: bool
     angles: np.ndarray = field(repr=False)
     prevailing: np.ndarray | None
+    climate: tuple | None
     surroundings: object
     bodies: tuple[Body, ...]
+    bracings: dict
     sensors: tuple
     booms: tuple
+    boom_sections: tuple
     panels: object
     order: int | None
     region: Region
@@ -162,6 +201,9 @@ class Case:
     def in_its_names(self, sentence):
         """A sentence of the library, which counts from zero, in the case's own names."""
         sentence = _COUNTED_SENSOR.sub(lambda found: f"sensor[{int(found[1]) + 1}]", sentence)
+        sentence = _COUNTED_BRACING.sub(
+            lambda found: list(self.bracings)[int(found["number"])], sentence
+        )
         return _COUNTED_BODY.sub(
             lambda found: (found["before"] or "") + self.bodies[int(found["number"])].name, sentence
         )
@@ -176,6 +218,7 @@ class Case:
                 order=self.order,
                 circulation=[body.circulation for body in self.bodies],
                 wakes=[body.wake for body in self.bodies],
+                bracings=tuple(self.bracings.values()),
             )
 
     def survey(self, model):
@@ -183,9 +226,9 @@ class Case:
         if not self.sensors:
             raise InputError(f"{self.file}: sensor: missing; a survey needs a [[sensor]]")
         with _located(self.file, self.in_its_names):
-            if self.by_bearing:
-                return ob.survey(model, self.sensors, bearings=self.angles)
-            return ob.survey(model, self.sensors, directions=self.angles)
+            kind = "bearings" if self.by_bearing else "directions"
+            angles = {kind: self.angles}
+            return ob.survey(model, self.sensors, booms=self.boom_sections, **angles)
 
     def uncertainty(self, table):
         """What the case's tolerances make of its survey, or None where it states none."""
@@ -276,7 +319,10 @@ def read_case(path):
     reading.surroundings = _surroundings(top.table("surroundings", optional=True))
     angles, prevailing, speed, speed_unit = _stream(top.table("stream"))
     bodies = _bodies(top)
-    sensors, booms = _sensors(top, bodies)
+    climate = _climate(top.table("climate")) if top.has("climate") else None
+    bracings = _bracings(top, bodies)
+    sensors, mounts = _sensors(top, bodies)
+    booms, boom_sections = zip(*mounts, strict=True) if mounts else ((), ())
     panels, order = _panels(top.table("panels", optional=True), len(bodies))
     region = _region(top.table("field", optional=True))
     tolerances = _tolerances(top.table("uncertainty", optional=True), booms)
@@ -294,10 +340,13 @@ def read_case(path):
         by_bearing=reading.by_bearing,
         angles=angles,
         prevailing=prevailing,
+        climate=climate,
         surroundings=reading.surroundings,
         bodies=bodies,
+        bracings=bracings,
         sensors=sensors,
         booms=booms,
+        boom_sections=boom_sections,
         panels=panels,
         order=order,
         region=region,
@@ -574,6 +623,20 @@ def _stream(section):
     return angles, prevailing, speed, speed_unit
 
 
+def _climate(section):
+    """The middles of the sectors, and their shares."""
+    key = section.angle_key("{}s", "a list of angles in degrees")
+    angles = section.angle_list(key)
+    given = section.numbers("frequencies", "a list of numbers")
+    frequencies = as_reals(section.place("frequencies"), given)
+    section.close()
+    if frequencies.shape != angles.shape:
+        raise section.error("frequencies", f"expected {angles.size} numbers, one for each of {key}")
+    if frequencies.min() < 0 or frequencies.sum() == 0:
+        raise section.error("frequencies", f"expected none below zero, and not all zero: {given}")
+    return angles, frequencies / frequencies.sum()
+
+
 def _angles(section, key):
     value = section.entries[key]
     if isinstance(value, str):
@@ -759,15 +822,51 @@ def _centroid(outline):
     )
 
 
+def _bracings(top, bodies):
+    """{name: bracing} of all faces."""
+    sections = top.tables("bracing")
+    names = [section.text("name", f"bracing {n}") for n, section in enumerate(sections, start=1)]
+    _refuse_namesakes(sections, names)
+    faces = [_bracing(section, bodies) for section in sections]
+    return dict(zip(names, faces, strict=True))
+
+
+def _bracing(section, bodies):
+    drag_coefficient = section.number("drag_coefficient", least=0.0)
+    if section.has("between"):
+        start, end = _between(section, bodies)
+    else:
+        start, end = section.point("start"), section.point("end")
+    section.close()
+    with section.located():
+        return ob.Bracing(start, end, drag_coefficient)
+
+
+def _between(section, bodies):
+    """The places on two walls where the line that joins the axes leaves the bodies."""
+    names = [body.name for body in bodies]
+    pair = section.entries["between"]
+    if not isinstance(pair, list) or len(pair) != 2 or pair[0] == pair[1]:
+        raise section.error("between", f"expected the names of two bodies, got {pair!r}")
+    for name in pair:
+        if name not in names:
+            raise section.error("between", f"{name!r} is no body; {nearest_name(name, names)}")
+    one, other = (bodies[names.index(name)] for name in pair)
+    heading = (other.axis - one.axis) / abs(other.axis - one.axis)
+    start = one.axis + heading * _depth_of_wall(section, "between", one, heading)
+    end = other.axis - heading * _depth_of_wall(section, "between", other, -heading)
+    return (start.real, start.imag), (end.real, end.imag)
+
+
 def _sensors(top, bodies):
     sections = top.tables("sensor")
     mounted = [_sensor(section, bodies, n) for n, section in enumerate(sections, start=1)]
     _refuse_namesakes(sections, [sensor.name for sensor, _ in mounted])
-    return tuple(sensor for sensor, _ in mounted), tuple(boom for _, boom in mounted)
+    return tuple(sensor for sensor, _ in mounted), [mount for _, mount in mounted]
 
 
 def _sensor(section, bodies, number):
-    """A sensor, and the polyline of its boom or None."""
+    """A sensor, and its mount: the polyline of its boom and the boom's section, or None each."""
     kind = section.choice("kind", tuple(_KINDS))
     name = section.text("name", f"sensor {number}")
     return _KINDS[kind](section, bodies, name)
@@ -795,7 +894,7 @@ def _path_sensor(section, bodies, name):
         start, end = section.point("start"), section.point("end")
         section.close()
         with section.located():
-            return ob.PathSensor(start, end, name=name), None
+            return ob.PathSensor(start, end, name=name), UNMOUNTED
     length = section.number("path_length", positive=True)
     angle = section.angle("path_{}")
     middle, boom = _position(section, bodies)
@@ -810,7 +909,7 @@ def _crossed_paths(section, bodies, name):
         for path in section.tables("paths"):
             ends.append((path.point("start"), path.point("end")))
             path.close()
-        boom = None
+        boom = UNMOUNTED
     else:
         length = section.number("path_length", positive=True)
         angles = section.angle_list(section.angle_key("path_{}s", "a list of angles in degrees"))
@@ -827,12 +926,56 @@ def _path(section, middle, length, angle):
     return middle - half, middle + half
 
 
+def _cup_and_vane(section, bodies, name):
+    cup, cup_mount = _half_of_pair(section.table("cup"), bodies)
+    vane, vane_mount = _half_of_pair(section.table("vane"), bodies)
+    section.close()
+    if vane_mount.section is not None:
+        raise section.error(
+            "vane.boom.diameter", "the boom's own part counts for the cup; leave it out here"
+        )
+    lines = [mount.line for mount in (cup_mount, vane_mount) if mount.line is not None]
+    if len(lines) == 2:
+        lines.insert(1, lines[0][::-1])  # one line: out to the cup, back, and out to the vane
+    line = np.concatenate(lines) if lines else None
+    with section.located():
+        return ob.CupAndVane(cup, vane, name=name), Mount(line, cup_mount.section)
+
+
+def _half_of_pair(section, bodies):
+    radius = section.number("radius", None, positive=True)
+    place, mount = _position(section, bodies)
+    section.close()
+    with section.located():
+        return ob.PointSensor(*place) if radius is None else ob.DiscSensor(place, radius), mount
+
+
+def _pitot_tube(section, bodies, name):
+    axis = section.reading.directions(section.angle("nose_{}"))
+    behind = section.number("static_behind", 0.0, least=0.0)
+    yaw = {"greatest_yaw": section.number("greatest_yaw", positive=True, greatest=90.0)} if (
+        section.has("greatest_yaw")) else {}
+    (x, y), mount = _position(section, bodies)
+    section.close()
+    with section.located():
+        return ob.PitotTube(x, y, float(axis), behind, name=name, **yaw), mount
+
+
+def _multi_hole_probe(section, bodies, name):
+    axis = section.reading.directions(section.angle("nose_{}"))
+    hole_angles = section.numbers("hole_angles", "a list of angles in degrees")
+    (x, y), mount = _position(section, bodies)
+    section.close()
+    with section.located():
+        return ob.MultiHoleProbe(x, y, float(axis), hole_angles, name=name), mount
+
+
 def _wall_port(section, bodies, name):
     body = _index_of_body(section, bodies)
     arc_fraction = section.number("arc_fraction", least=0.0, greatest=1.0)
     section.close()
     with section.located():
-        return ob.WallPort(body, arc_fraction, name=name), None
+        return ob.WallPort(body, arc_fraction, name=name), UNMOUNTED
 
 
 _KINDS = {
@@ -840,6 +983,9 @@ _KINDS = {
     "disc": _disc_sensor,
     "path": _path_sensor,
     "crossed_paths": _crossed_paths,
+    "cup_and_vane": _cup_and_vane,
+    "pitot_tube": _pitot_tube,
+    "multi_hole_probe": _multi_hole_probe,
     "wall_port": _wall_port,
 }
 
@@ -852,31 +998,51 @@ def _index_of_body(section, bodies):
 
 
 def _position(section, bodies):
-    """Where a sensor stands, and the polyline of its boom or None."""
+    """Where a sensor stands, and its mount."""
     if not section.has("boom"):
         if not (section.has("x") or section.has("y")):
             raise section.missing("a position: x and y, or a boom", "boom", "x", "y")
-        return np.array([section.number("x"), section.number("y")]), None
+        return np.array([section.number("x"), section.number("y")]), UNMOUNTED
     for key in ("x", "y"):
         if section.has(key):
             raise section.error(key, "given beside 'boom'; a position is said one way")
     boom = section.table("boom")
     body = bodies[_index_of_body(boom, bodies)]
-    heading = section.reading.heading(boom.angle())
+    angle = boom.angle()
+    heading = section.reading.heading(angle)
     length = boom.number("length", positive=True)
     origin = boom.choice("from", ("axis", "face"))
     offset = boom.number("offset", 0.0)
+    across = _boom_section(boom, angle)
     boom.close()
     if origin == "face":
-        length += _depth_of_wall(boom, body, heading)
+        length += _depth_of_wall(boom, "from", body, heading)
     tip = body.axis + length * heading
     place = tip + 1j * heading * offset
     line = np.array([body.axis, tip, place])
-    return np.array([place.real, place.imag]), np.stack([line.real, line.imag], axis=-1)
+    return (
+        np.array([place.real, place.imag]),
+        Mount(np.stack([line.real, line.imag], axis=-1), across),
+    )
 
 
-def _depth_of_wall(boom, body, heading):
-    """How far from its axis the ray along a boom leaves a body."""
+def _boom_section(boom, angle):
+    """The boom's own section, or None where the case does not give its diameter."""
+    if not boom.has("diameter"):
+        for key in ("height", "drag_coefficient"):
+            if boom.has(key):
+                raise boom.missing(f"a number, beside {key}", "diameter")
+        return None
+    diameter, height = (boom.number(key, positive=True) for key in ("diameter", "height"))
+    drag_coefficient = boom.number("drag_coefficient", None, least=0.0)
+    wake = None if drag_coefficient is None else ob.Wake(drag_coefficient)
+    direction = 90.0 - angle if boom.reading.by_bearing else angle
+    with boom.located():
+        return ob.Boom(direction, height, diameter, wake)
+
+
+def _depth_of_wall(section, key, body, heading):
+    """How far from its axis a ray leaves a body."""
 
     def along(s):
         return (body.outline.position(np.asarray(s) % 1.0) - body.axis) / heading
@@ -889,10 +1055,11 @@ def _depth_of_wall(boom, body, heading):
     ]
     depths = [depth for depth in (float(along(root).real) for root in roots) if depth > 0]
     if len(depths) % 2 == 0:
-        raise boom.error(
-            "from",
-            f'"face" needs an axis inside the body, and ({body.axis.real:g}, {body.axis.imag:g}) '
-            f"is outside {body.name!r}; give the body an axis, or count from the axis",
+        raise section.error(
+            key,
+            f'"{"face" if key == "from" else key}" needs an axis inside the body, and '
+            f"({body.axis.real:g}, {body.axis.imag:g}) is outside {body.name!r}; give the body an "
+            "axis, or count from elsewhere",
         )
     return min(depths)
 

@@ -96,6 +96,7 @@ def potential(panels, surroundings, strengths, cuts, downstream, z):
     rise = rise * half[:, None]
     steps = 2.0 * half * coefficients[..., 0]
     totals = np.empty((len(strengths), panels.bodies), complex)
+    last = np.empty((len(strengths), panels.bodies), complex)
     for row in range(len(strengths)):
         for body in range(panels.bodies):
             part = panels.panel_slice(body)
@@ -104,12 +105,14 @@ def potential(panels, surroundings, strengths, cuts, downstream, z):
             before = np.concatenate([[0.0], np.cumsum(turned)])
             rise[row, part, 0] += np.roll(before[:-1], shift)
             totals[row, body] = before[-1]
+            # Where the integral ends: a closed wall's where it starts, an open one's elsewhere.
+            last[row, body] = np.roll(panels.ends[part, 1], -shift)[-1]
     total = _field(panels, surroundings, *_from_coefficients(panels, rise), z)
 
     def logarithms(z, downstream):
         for row in range(len(strengths)):
             for body in range(panels.bodies):
-                away = z - panels.ends[cuts[row, body], 0]
+                away = z - last[row, body]
                 log = images.log_sinh(surroundings.period, away, downstream[row])
                 yield row, totals[row, body] * log
 
@@ -128,7 +131,7 @@ def _at_places(panels, strengths):
     Without it the logarithms of the two would not cancel there, and a target near an end would see
     their difference.
     """
-    by_panel = strengths.reshape(len(strengths), -1, panels.order)
+    by_panel = strengths.reshape(len(strengths), len(panels.ends), panels.order)
     if panels.order == 1:
         return by_panel
     ends = by_panel @ to_ends(panels.order).T

@@ -86,7 +86,8 @@ def _moments(places, nearest):
     """(TERMS, N) coefficients of x^k in the far copies' sum, d = (x - places) (M + 1) P."""
     m = np.arange(TERMS // 2)
     size = np.zeros(2 * TERMS)
-    size[2 * m + 1] = 2.0 * (-1.0) ** m * zeta(2 * m + 2, nearest + 1) * (nearest + 1.0) ** (2 * m + 2)
+    far = zeta(2 * m + 2, nearest + 1) * (nearest + 1.0) ** (2 * m + 2)
+    size[2 * m + 1] = 2.0 * (-1.0) ** m * far
     k = np.arange(TERMS)
     binomial = size[k[:, None] + k] * comb(k[:, None] + k, k[:, None]) * (-1.0) ** k
     return binomial @ np.vander(places, TERMS, increasing=True).T

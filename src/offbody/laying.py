@@ -19,6 +19,7 @@ EDGE_FLOOR = 1e-8         # least panel at a sharp edge, of the perimeter
 JOIN_FLOOR = 1.0 / 8.0    # least panel at a jump of curvature, of what curvature asks for there
 PER_GAP = 1.0             # panel length over the scale on which a gap changes along the wall
 LEAST = 1e-9              # no floor is less, of the perimeter: rounding would tell in the nodes
+ROUNDING = 1e-11          # nor is one less than this share of the distance from the origin
 TOUCH = 1e-9              # bodies closer than this fraction of the smaller one touch
 
 
@@ -162,13 +163,14 @@ def _length_field(wall, gap, scale):
     around = (wall.breaks[:, None] + np.concatenate([nearby, -nearby])) % total
     grid = np.unique(np.concatenate([arcs, around.ravel(), [0.0, total]]))
     field = np.interp(grid, arcs, wanted, period=total)
+    least = max(LEAST * total, ROUNDING * np.abs(wall.sample_points).max())
     for place in wall.breaks:
         if place == wall.edge:
             floor = EDGE_FLOOR * total
         else:
             floor = JOIN_FLOOR * np.interp(place, arcs, wanted, period=total)
         away = np.abs((grid - place + 0.5 * total) % total - 0.5 * total)
-        field = np.minimum(field, max(LEAST * total, scale * floor) + GROWTH * away)
+        field = np.minimum(field, max(least, scale * floor) + GROWTH * away)
     return grid, field
 
 

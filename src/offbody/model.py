@@ -1,8 +1,8 @@
 """The solved flow about a set of bodies, and everything that can be asked of it.
 
-One factorisation of the equation on the walls serves the two unit onset directions, unit circulation
-of each body that has any, and the wake of every direction; the flow for a direction is a linear
-combination of them.
+One factorisation of the equation on the walls serves the two unit onset directions, unit
+circulation of each body that has any, and the wake of every direction; the flow for a direction is
+a linear combination of them.
 """
 
 import warnings
@@ -28,8 +28,8 @@ from offbody.bracings import Bracing, Screens
 from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
 from offbody.equation import BY_MATRIX, Equation
 from offbody.errors import AccuracyWarning, InputError
-from offbody.outlines import Outline
 from offbody.laying import lay, measure
+from offbody.outlines import Outline
 from offbody.panels import assemble, to_modes
 from offbody.surroundings import KINDS, OpenStream, holds
 from offbody.tracing import trace
@@ -336,12 +336,12 @@ class Model:
 
     @property
     def _is_pushed(self):
-        """Whether sources push the stream aside, so that each direction has strengths of its own."""
+        """Whether wakes or bracings push the stream aside, in each direction in another way."""
         return bool(any(self.wakes) or self.bracings)
 
     def _pushed(self, directions, blown):
         """(directions, N) strengths with normal speeds blown through walls; the onset there."""
-        moved = self._equation.response(blown)
+        moved = self._equation.response(blown) if any(self.wakes) else 0j * blown
         gamma, onset = self._wall_flow(directions, blown @ self._panels.weights, moved.real)
         return gamma + 1j * blown, onset
 
@@ -351,7 +351,8 @@ class Model:
         Those of bracings come on top.
         """
         screens = self._screens.strengths(directions)
-        flux, moved = flux + screens @ self._screens.lengths, moved + screens @ self._screened
+        flux = flux + screens @ self._screens.lengths
+        moved = moved + screens @ self._screened
         onset, circulations = self._onset(directions, flux, moved)
         return onset @ self._unit + moved + circulations @ self._spin, onset
 
@@ -365,7 +366,8 @@ class Model:
     def _errors(self, strengths, free):
         """Strengths (R, N) of the flow that the walls let through, but should not.
 
-        free: onset and bracings at the nodes, u - i v, (R, 1) where they are the same at all. See offbody.accuracy. A sharp edge's Kutta condition holds for the error as well.
+        free: onset and bracings u - i v at the nodes, (R, N), or (R, 1) if the same at all of them.
+        See offbody.accuracy. A sharp edge's Kutta condition holds for the error as well.
         """
         through = self._panels.tangents * free + self._equation.wall_velocity(strengths)
         errors = self._equation.response(through.imag - strengths.imag)
@@ -508,7 +510,7 @@ class Model:
 
     def _wall_normal_speeds(self, directions):
         """(directions, N) outward normal speed on the walls."""
-        if not any(self.wakes):
+        if not any(self.wakes) or not len(directions):
             return np.zeros((len(directions), self.node_count))
         return blown_speeds(self, self._lees(directions))
 
@@ -520,7 +522,8 @@ class Model:
             for row, one in enumerate(new.tolist()):
                 self._settled[one] = {b: lee.at([row]) for b, lee in found.items()}
         kept = [self._settled[one] for one in directions.tolist()]
-        return {b: Lee.joined([lees[b] for lees in kept]) for b in kept[0]}
+        bodies = kept[0] if kept else ()
+        return {b: Lee.joined([lees[b] for lees in kept]) for b in bodies}
 
     # --- places on the walls ----------------------------------------------------------------
 
@@ -673,8 +676,12 @@ class Model:
         rows, combination, onset = self._state(np.array([direction]))
         strengths = rows if combination is None else combination @ rows
 
+        screens = self._screens.strengths(np.array([direction]))
+
         def velocity(z):
             total = flow.velocity(self._panels, self.surroundings, strengths, z) + onset[:, None]
+            if self.bracings:
+                total += screens @ self._screens.velocity(z)
             return self._masked(total, z)[0]
 
         return velocity
@@ -728,7 +735,8 @@ class Model:
         """(...,) stream function at points (..., 2), a length for unit onset speed.
 
         Far away without circulation and wakes it is y cos(direction) - x sin(direction). A wake
-        makes a cut straight downstream of its body. NaN inside a body.
+        makes a cut straight downstream of its body, a bracing one along itself and straight
+        downstream of its end. NaN inside a body.
 
         Examples
         --------
@@ -1014,7 +1022,9 @@ def _as_outlines(outlines):
         raise InputError(f"outlines must be an outline or a sequence of them, got {outlines!r}")
     for k, body in enumerate(bodies):
         if not isinstance(body, Outline):
-            raise InputError(f"outlines[{k}] must be an outline such as ob.circle(...), got {body!r}")
+            raise InputError(
+                f"outlines[{k}] must be an outline such as ob.circle(...), got {body!r}"
+            )
     return tuple(bodies)
 
 

@@ -17,10 +17,11 @@ INK, SOFT, PALE = "#1a1a1a", "#5c5c5c", "#e4e4e4"
 BLUE, ORANGE = "#0a5ea8", "#c2570c"
 
 WIDTH = 720.0  # of a drawing, as is its text, in CSS pixels
-CHART_HEIGHT = 190.0
+CHART_HEIGHT = 172.0
+LABEL_HEIGHT = 20.0  # more, where the x axis has a label
 PLAN_RADIUS = 262.0  # of the outermost ring
 PLAN_HEIGHT = 420.0  # at most, of a plan without rings
-RING_BREADTH = 13.0
+RING_BREADTH, RING_GAP = 9.0, 5.0
 FEW = 40  # points of a line, up to which each is marked by a dot
 
 # What a sector or a stretch of an axis can be, and how it is filled.
@@ -57,6 +58,8 @@ th, td {{ padding: .35rem .9rem .35rem 0; text-align: left; vertical-align: top;
   border-bottom: 1px solid {PALE}; font-variant-numeric: tabular-nums; }}
 thead th {{ border-bottom-color: {INK}; font-weight: 600; vertical-align: bottom; }}
 tbody th {{ font-weight: 600; }}
+th[scope=row] {{ min-width: 5rem; }}
+td, thead th {{ overflow-wrap: break-word; }}
 .number {{ text-align: right; white-space: nowrap; }}
 figure {{ margin: 1.4rem 0; break-inside: avoid; }}
 figure svg, figure img {{ display: block; width: 100%; height: auto; }}
@@ -79,8 +82,10 @@ pre {{ font: .8125rem/1.45 "DejaVu Sans Mono", Consolas, monospace; white-space:
   h2 {{ margin-bottom: .5rem; break-after: avoid; }}
   h1 {{ font-size: 18pt; }}
   .lead {{ font-size: 12.5pt; }}
-  tr, li, .key {{ break-inside: avoid; }}
-  caption, .key {{ break-after: avoid; }}
+  .tall svg {{ max-height: 118mm; }}
+  .tall img {{ max-height: 150mm; max-width: 100%; width: auto; }}
+  table, li, .key {{ break-inside: avoid; }}
+  .key {{ break-after: avoid; }}
   p, li, pre {{ orphans: 3; widows: 3; }}
 }}
 """
@@ -181,10 +186,14 @@ def table(caption, heads, rows, numbers=()):
     )
 
 
-def figure(body, caption, entries=()):
-    """A drawing with its key, entries of (fill, text), and its caption."""
+def figure(body, caption, entries=(), tall=False):
+    """Drawings with their key, entries of (fill, text), and their caption.
+
+    A tall one is drawn smaller on paper, to leave room on the sheet.
+    """
     shown = key(entries) if entries else ""
-    return f"<figure>\n{body}\n{shown}<figcaption>{escape(caption)}</figcaption>\n</figure>"
+    mark = ' class="tall"' if tall else ""
+    return f"<figure{mark}>\n{body}\n{shown}<figcaption>{escape(caption)}</figcaption>\n</figure>"
 
 
 def key(entries):
@@ -241,7 +250,7 @@ class Chart:
     Attributes
     ----------
     x_label, y_label : str
-        With their units.
+        With their units; the first may be left empty, as above another chart of the same axis.
     lines : tuple of Line
     x_limits, y_limits : (low, high)
     x_step : float or None
@@ -270,8 +279,9 @@ class Chart:
 
 def chart(chart, description):
     """The SVG of a Chart; the description is what someone who cannot see it is told."""
-    left, top, bottom = 52.0, 26.0, 40.0
+    left, top, bottom = 52.0, 26.0, 24.0
     wide, high = WIDTH - left - 14.0, CHART_HEIGHT - top - bottom
+    height = CHART_HEIGHT + (LABEL_HEIGHT if chart.x_label else 0.0)
     (x0, x1), (y0, y1) = chart.x_limits, chart.y_limits
 
     def across(x):
@@ -280,20 +290,22 @@ def chart(chart, description):
     def down(y):
         return (y1 - np.asarray(y, float)) / (y1 - y0) * high
 
-    inside = [
-        _rectangle(*across([start, stop]), 0.0, high, fill) for start, stop, fill in chart.spans
-    ]
+    inside, parts = [], [_text(0, 14, chart.y_label, weight=600)]
     if chart.limit is not None:
-        inside.insert(0, _rectangle(0.0, wide, *down([chart.limit, -chart.limit]), "limit"))
+        inside.append(_rectangle(0.0, wide, *down([chart.limit, -chart.limit]), "limit"))
+    for y in ticks(y0, y1):
+        at = float(down(y))
+        inside.append(_path(f"M0 {at:.1f}h{wide:g}", SOFT if y == 0 else PALE))
+        parts.append(_text(left - 8, top + at + 4, f"{y:.4g}", "end"))
+    inside += [
+        _rectangle(*across([start, stop]), 0.0, high, fill)
+        for start, stop, fill in chart.spans
+        if start < x1 and stop > x0
+    ]
     for line in chart.lines:
         inside += _curve(line, across, down)
     for x, y, text in chart.points:
         inside += _named_point(float(across(x)), float(down(y)), text, wide)
-    parts = [_text(0, 14, chart.y_label, weight=600)]
-    for y in ticks(y0, y1):
-        at = top + float(down(y))
-        parts.append(_path(f"M{left:g} {at:.1f}h{wide:g}", INK if y == 0 else PALE))
-        parts.append(_text(left - 8, at + 4, f"{y:.4g}", "end"))
     # A nested drawing cuts off what leaves the axes.
     parts.append(
         f'<svg x="{left:g}" y="{top:g}" width="{wide:g}" height="{high:g}">'
@@ -304,9 +316,10 @@ def chart(chart, description):
         at = left + float(across(x))
         parts.append(_path(f"M{at:.1f} {top + high:g}v5", INK))
         parts.append(_text(at, top + high + 18, chart.x_words(x), "middle"))
-    parts.append(_text(left + wide, CHART_HEIGHT - 4, chart.x_label, "end"))
+    if chart.x_label:
+        parts.append(_text(left + wide, height - 6, chart.x_label, "end"))
     parts += _names(chart.lines)
-    return _drawing(CHART_HEIGHT, parts, description)
+    return _drawing(height, parts, description)
 
 
 def _curve(line, across, down):
@@ -496,20 +509,18 @@ def _placing(scale, middle, centre):
 
 def _ringed(plan, points, middle, description):
     """A plan inside its rings, with the angles round them."""
-    breadth = min(RING_BREADTH, 100.0 / len(plan.rings))
-    inner = PLAN_RADIUS - (breadth + 3.0) * len(plan.rings)
+    inner = PLAN_RADIUS - (RING_BREADTH + RING_GAP) * len(plan.rings)
     scale = (inner - 34.0) / np.hypot(*(points - middle).T).max()
     centre = (WIDTH / 2, PLAN_RADIUS + 30.0)
     height = 2 * PLAN_RADIUS + 60.0
     parts = []
     for number, ring in enumerate(plan.rings):
-        near = inner + number * (breadth + 3.0)
+        near = inner + number * (RING_BREADTH + RING_GAP)
         for start, stop, fill in ring.sectors:
-            parts.append(_sector(centre, near, near + breadth, start, stop, fill))
-        if breadth >= 10:
-            x, y = _polar(centre, near + breadth / 2, 45.0)
-            parts.append(f'<circle cx="{x:.1f}" cy="{y:.1f}" r="7" fill="#fff"/>')
-            parts.append(_text(x, y + 4, ring.tag, "middle", 600))
+            parts.append(_sector(centre, near, near + RING_BREADTH, start, stop, fill))
+        x, y = _polar(centre, near + RING_BREADTH / 2, 45.0)
+        parts.append(f'<circle cx="{x:.1f}" cy="{y:.1f}" r="7" fill="#fff"/>')
+        parts.append(_text(x, y + 4, ring.tag, "middle", 600))
     for place in range(0, 360, 30):
         (x, y), (tick_x, tick_y) = (
             _polar(centre, PLAN_RADIUS + away, place) for away in (16, 0)
@@ -575,7 +586,7 @@ def _standing(plan, to_paper, scale, middle):
         _tag(tags, np.array([x, y]) + 19.0 * away / (np.hypot(*away) or 1.0), marker.tag)
     for place, names in tags:
         text = ", ".join(names)
-        half = 4.0 + 3.7 * len(text)
+        half = max(9.0, 5.0 + 3.5 * len(text))
         x, y = place
         yield (f'<rect x="{x - half:.1f}" y="{y - 9:.1f}" width="{2 * half:.1f}" height="18" '
                f'rx="9" fill="#fff" stroke="{INK}"/>')

@@ -9,7 +9,6 @@ from numpy.polynomial import legendre
 from offbody.images import Copies
 
 
-
 def reach(order):
     """Half-chords from a panel's middle beyond which its nodes are as good as the closed form.
 
@@ -40,7 +39,7 @@ class Panels:
     place_modes: np.ndarray     # (P, places, places) the same from nodes and both ends
     place_tangents: np.ndarray  # (P, places)
     bulge: np.ndarray           # (P, order)
-    slack: np.ndarray           # (P,)
+    slack: np.ndarray           # (P, 2)
     size: float
     edged: np.ndarray           # (bodies,) bool: the body's first panel starts at a sharp edge
     copies: Copies | None       # where the surroundings repeat them
@@ -66,9 +65,8 @@ class Panels:
         for body in range(self.bodies):
             part = self.panel_slice(body)
             z = self.ends[part]
-            room = np.max(
-                np.abs(z[:, 1] - z[:, 0]) * (np.abs(self.bulge[part]).sum(1) + self.slack[part])
-            )
+            height = np.abs(self.bulge[part]).sum(1) + self.slack[part].sum(1)
+            room = np.max(np.abs(z[:, 1] - z[:, 0]) * height)
             rows.append(
                 [z.real.min() - room, z.real.max() + room, z.imag.min() - room, z.imag.max() + room]
             )
@@ -96,8 +94,9 @@ def assemble(walls, bodies, order, surroundings, closed=True):
             nodes, weights = 0.5 * (a + b), np.abs(b - a)
             tangents = (b - a) / weights
         parts.append((a, b, nodes, tangents, weights, arcs.ravel(), ends))
-    a, b, nodes, tangents, weights, arcs = (np.concatenate(p) for p in list(zip(*parts))[:6])
-    end_arcs = np.concatenate([np.stack([e[:-1], e[1:]], 1) for *_, e in parts])
+    columns = [list(column) for column in zip(*parts, strict=True)]
+    a, b, nodes, tangents, weights, arcs = (np.concatenate(column) for column in columns[:6])
+    end_arcs = np.concatenate([np.stack([e[:-1], e[1:]], 1) for e in columns[6]])
     size = float(np.ptp(nodes.real) + np.ptp(nodes.imag))
     modes, place_modes, bulge, slack = _local_shapes(a, b, nodes, order)
     normals = _end_normals(starts, tangents, order)
@@ -147,19 +146,20 @@ def _local_shapes(a, b, nodes, order):
     """Per panel: values to Legendre coefficients, and the curve's height over the chord."""
     local = (nodes.reshape(-1, order) - 0.5 * (a + b)[:, None]) / (0.5 * (b - a))[:, None]
     modes = np.linalg.inv(legendre.legvander(local, order - 1))
+    # A curve's height is known to about the size of its last coefficients, and to rounding.
+    rounding = 1e-12 + 8e-16 * np.abs(nodes).max() / np.abs(0.5 * (b - a))
     if order == 1:
         modes = modes.astype(complex)
-        return modes, modes, np.zeros((len(a), 1)), np.full(len(a), 1e-10)
+        slack = np.stack([np.zeros(len(a)), rounding], axis=1)
+        return modes, modes, np.zeros((len(a), 1)), slack
     places = np.concatenate([local, np.tile([-1.0 + 0j, 1.0], (len(a), 1))], axis=1)
     place_modes = np.linalg.inv(legendre.legvander(places, order + 1))
     x, height = local.real, local.imag
     shape = np.linalg.solve(
         legendre.legvander(x, order - 1), (height / (1.0 - x * x))[..., None]
     )[..., 0]
-    # A height is known to about the size of its last coefficients, and to the rounding of nodes.
-    tail = np.abs(shape[:, -2:]).sum(axis=1)
-    rounding = 8e-16 * np.abs(nodes).max() / np.abs(0.5 * (b - a))
-    return modes, place_modes, np.ascontiguousarray(shape), 10.0 * tail + 1e-10 + rounding
+    tail = 10.0 * np.abs(shape[:, -2:]).sum(axis=1)
+    return modes, place_modes, np.ascontiguousarray(shape), np.stack([tail, rounding], axis=1)
 
 
 def _end_normals(starts, tangents, order):

@@ -141,12 +141,15 @@ def _holds(geometry, panels, z):
         within = (np.count_nonzero(spans & (x < a.real + slope * (y - a.imag)), axis=1) % 2) == 1
     dx, dy, _ = _differences(z, 0.5 * (a + b))
     t_re, t_im = _over(h, dx, dy)
-    band = np.abs(bulge).sum(axis=1) + slack
-    target, panel = np.nonzero((np.abs(t_re) <= 1.0 + 1e-9) & (np.abs(t_im) <= band))
-    above = t_im[target, panel] - _curve_height(t_re[target, panel], bulge[panel])
+    band = np.abs(bulge).sum(axis=1) + slack.sum(axis=1)
+    target, panel = np.nonzero(
+        (np.abs(t_re) <= 1.0 + 1e-9 + slack[:, 1]) & (np.abs(t_im) <= band)
+    )
+    x = t_re[target, panel]
+    above = t_im[target, panel] - _curve_height(x, bulge[panel])
     # Of each target's panels the nearest comes last and is the one that stays.
     order = np.argsort(-np.abs(above) * np.abs(h[panel]), kind="stable")
-    within[target[order]] = (above > slack[panel])[order]
+    within[target[order]] = (above > _wall_slack(x, slack[panel]))[order]
     return within
 
 
@@ -293,11 +296,16 @@ def _to_ends(geometry, z, panel):
 
 def _under_curve(geometry, t, panel, angle):
     """Indices of targets above the chord, but not above the curve."""
-    bulge, slack = geometry[7], geometry[8].take(panel)
-    above = np.flatnonzero((t.imag > -slack) & (np.abs(t.real) < 1.0) & (angle > 0.0))
-    x, slack = t.real[above], slack[above]
-    height = _curve_height(x, bulge[panel[above]]) + slack * (1.0 - x * x)
+    bulge, slack = geometry[7], geometry[8]
+    above = np.flatnonzero((np.abs(t.real) < 1.0) & (angle > 0.0))
+    x, panel = t.real[above], panel[above]
+    height = _curve_height(x, bulge[panel]) + _wall_slack(x, slack[panel])
     return above[t.imag[above] <= height]
+
+
+def _wall_slack(x, slack):
+    """How well _curve_height knows the wall at x (n,), slack (n, 2)."""
+    return np.maximum(0.0, 1.0 - x * x) * slack[:, 0] + slack[:, 1]
 
 
 def _curve_height(x, bulge):

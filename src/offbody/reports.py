@@ -29,6 +29,7 @@ PAGE_WIDTH = 92
 MOST_SECTORS = 8  # of one kind that a page lists; the table has them all
 MOST_RINGS = 8  # sensors round the plan
 MOST_BUDGETS = 6  # sensors whose budget is printed line by line
+LEAST_SHARE = 0.001  # of the variance, for a line of a budget
 
 # What a folder may hold and still be replaced: no file that somebody else put there.
 OWN_FILES = re.compile(
@@ -321,7 +322,7 @@ def readings(case, table, place):
                       lambda error: _percent(case, error))
     component = table.component_error[:, place]
     if np.isfinite(component).any():
-        yield Reading("component error", 100 * component, "percent", None,
+        yield Reading("component error", 100 * component, "percent of the undisturbed speed", None,
                       lambda error: f"{error:+.2f} percent of the undisturbed speed")
     turning = table.direction_error[:, place]
     if np.isfinite(turning).any():
@@ -362,6 +363,8 @@ def _within(reading, trust):
 
 def _range(reading, trust):
     trusted = reading.errors[trust]
+    if not trusted.size:
+        return "not known: no angle is trusted"
     return f"{np.nanmin(trusted):.3f} to {np.nanmax(trusted):.3f} where trusted"
 
 
@@ -442,67 +445,87 @@ def _kind(case):
 
 
 def _answer(case, table, budget):
-    rows = []
-    for place, name in enumerate(table.names):
-        rows += [
-            _answer_row(case, table, budget, place, name, reading)
-            for reading in readings(case, table, place)
-        ]
-    heads = ["Sensor", "Reads", "Within its limit", "Worst", "Expected", "Leave out", "Doubtful"]
+    """Where which sensor can be believed, and how far."""
+    rows = [
+        _answer_row(table, budget, place, reading)
+        for place in range(len(table.names))
+        for reading in readings(case, table, place)
+    ]
     caption = (
         f"What each sensor reads against the undisturbed stream, by {_kind(case)} in degrees. "
         f"Limits: {100 * LIMIT:g} percent of the speed (as IEC 61400-12-1 has it for a mast), "
         f"{DIRECTION_LIMIT:g} degree of direction. Expected: the mean error and the root of its "
         "mean square, over the trusted angles, all alike"
-        + ("; and what is left once corrected, at k = 2, in the middle of the angles."
+        + ("; and half the width of the 95 percent interval once corrected, in the median."
            if budget else ".")
     )
-    lead = pages.paragraphs(_verdict(case, table), kind="lead")
-    return lead + pages.table(caption, heads, rows)
+    return "\n".join((
+        pages.paragraphs(_verdict(case, table, budget), kind="lead"),
+        pages.table(caption, ["Sensor", "Reads", "Within its limit", "Worst", "Expected"], rows),
+        pages.table(
+            "What to leave out, and where to look twice.", ["Sensor", "Leave out", "Doubtful"],
+            [_exclusions(case, table, place) for place in range(len(table.names))],
+        ),
+    ))
 
 
-def _verdict(case, table):
+def _verdict(case, table, budget):
     """Where a sensor can be believed, in one or two sentences."""
     speeds = [
-        _within(reading, table.trust[:, place])
+        (place, reading)
         for place in range(len(table.names))
         for reading in readings(case, table, place)
         if reading.name == "speed"
     ]
     if not speeds:
-        covered = table.trust.any(axis=1)
-        return f"Some sensor can be trusted {_share(case, table, covered)}."
-    covered = np.any(speeds, axis=0)
-    who = "The sensor reads" if len(table.names) == 1 else "Some sensor reads"
-    return (
-        f"{who} within {100 * LIMIT:g} percent of the undisturbed speed "
-        f"{_share(case, table, covered)}."
+        who = "sensor can" if len(table.names) == 1 else "or more of the sensors can"
+        return f"{_share(case, table, table.trust.any(axis=1))}, one {who} be trusted."
+    good = np.any([_within(reading, table.trust[:, place]) for place, reading in speeds], axis=0)
+    who = "the sensor reads" if len(table.names) == 1 else "one or more of the sensors read"
+    text = (
+        f"{_share(case, table, good)}, {who} within {100 * LIMIT:g} percent of the undisturbed "
+        "speed."
     )
+    expanded = [_expanded(budget, place, reading) for place, reading in speeds]
+    known = [each for each in expanded if each is not None]
+    if known:
+        best = np.fmin.reduce(known)
+        text += (
+            f" Corrected by this survey, expect \u00b1{np.nanmedian(best):.1f} percent (k = 2) "
+            "from the best of them."
+        )
+    return text
 
 
 def _share(case, table, good):
-    """How many of the angles, and which not."""
-    counted = f"at {good.sum()} of {good.size} {_kind(case)}s"
-    if good.all() or not good.any():
-        return f"{counted}: {_sectors(table, good)}"
-    return f"{counted}; not at {_sectors(table, ~good)}"
+    """At how many of the angles, and at which not; to begin a sentence."""
+    if good.all():
+        return f"At every {_kind(case)}"
+    counted = f"At {good.sum()} of {good.size} {_kind(case)}s"
+    return f"{counted} (not {_sectors(table, ~good)})" if good.any() else counted
 
 
-def _answer_row(case, table, budget, place, name, reading):
+def _answer_row(table, budget, place, reading):
     trust = table.trust[:, place]
+    return [
+        table.names[place],
+        reading.name,
+        _sectors(table, _within(reading, trust)) if reading.limit else "no limit",
+        _worst(table, reading, trust) if reading.unit else _range(reading, trust),
+        _expected(reading, trust, _expanded(budget, place, reading)),
+    ]
+
+
+def _exclusions(case, table, place):
+    trust, doubtful = table.trust[:, place], table.trust[:, place] & table.doubtful[:, place]
     left_out = [
         f"{_sectors(table, table.reason[:, place] == reason)}: {case.in_its_names(reason)}"
         for reason in dict.fromkeys(table.reason[~trust, place])
     ]
-    doubtful = trust & table.doubtful[:, place]
     return [
-        name,
-        reading.name,
-        _sectors(table, _within(reading, trust)) if reading.limit else "no limit",
-        _worst(table, reading, trust),
-        _expected(reading, trust, _expanded(budget, place, reading)),
+        table.names[place],
         "; ".join(left_out) or "nothing",
-        _sectors(table, doubtful) if doubtful.any() else "none",
+        f"{_sectors(table, doubtful)}: at the edge of a lee" if doubtful.any() else "nothing",
     ]
 
 
@@ -510,10 +533,11 @@ def _expected(reading, trust, expanded):
     """Mean and root mean square of the trusted errors; what is left of them once corrected."""
     errors = reading.errors[trust & np.isfinite(reading.errors)]
     if not errors.size:
-        return "not known"
-    if not reading.unit:
-        return _range(reading, trust)
-    text = f"mean {errors.mean():+.2f}, r.m.s. {np.sqrt(np.mean(errors**2)):.2f} {reading.unit}"
+        return "not known: no angle is trusted"
+    digits = 2 if reading.unit else 3
+    mean = errors.mean().round(digits) + 0.0  # no minus before a zero
+    square = np.sqrt(np.mean(errors**2))
+    text = f"mean {mean:+.{digits}f}, r.m.s. {square:.{digits}f} {reading.unit}".rstrip()
     if expanded is not None:
         text += f"; corrected \u00b1{np.nanmedian(expanded):.2f}"
     return text
@@ -563,7 +587,9 @@ def _plan(case, table):
         ("doubtful", "trusted, but doubtful"), ("excluded", "leave out"),
     ]
     described = f"Plan of {', '.join(body.name for body in case.bodies)} with sensors {who}."
-    return pages.figure(pages.plan(drawing, described), caption, key if ringed else ())
+    return pages.figure(
+        pages.plan(drawing, described), caption, key if ringed else (), tall=True
+    ) + pages.bullets(_body_line(body) for body in case.bodies)
 
 
 def _marker(table, place):
@@ -624,6 +650,7 @@ def _maps(case, pictures, no_pictures):
             pages.picture(png, f"Map of the speed ratio with streamlines, {_kind(case)} "
                                f"{angle:g} degrees, with the bodies, booms and sensors."),
             f"Speed ratio and streamlines at {_kind(case)} {angle:g} degrees.",
+            tall=True,
         )
         for angle, png in pictures
     ]
@@ -631,68 +658,85 @@ def _maps(case, pictures, no_pictures):
 
 
 def _curves(case, table, budget):
-    """Every reading against the angle, one below the other."""
-    figures = []
-    for place, name in enumerate(table.names):
-        for reading in readings(case, table, place):
-            expanded = _expanded(budget, place, reading)
-            caption = f"{name}: {_worst(table, reading, table.trust[:, place])}."
-            figures.append(pages.figure(
-                _curve(case, table, place, reading, expanded), caption[0].upper() + caption[1:]
-            ))
-    band = []
-    if budget is not None:
-        band = [("band", "uncertainty once corrected, k = 2")]
+    """Every reading of every sensor against the angle."""
+    band = [("band", "uncertainty once corrected, k = 2")] if budget else []
     key = pages.key([
         ("line", "error"), *band, ("limit", "limit"), ("doubtful", "doubtful"),
-        ("excluded", "leave out: no curve"),
+        ("excluded", "leave out"),
     ])
-    return key + "\n".join(figures)
+    return key + "\n".join(
+        _sensor_figure(case, table, budget, place) for place in range(len(table.names))
+    )
 
 
-def _curve(case, table, place, reading, expanded):
+def _sensor_figure(case, table, budget, place):
+    """The readings of one sensor, one below the other."""
+    read, trust = list(readings(case, table, place)), table.trust[:, place]
+    expanded = [_expanded(budget, place, reading) for reading in read]
+    drawings = [
+        pages.chart(
+            _chart(case, table, place, reading, band, reading is read[-1]),
+            f"{table.names[place]}: {_label(case, reading)} against the {_kind(case)}. "
+            f"Worst: {_worst(table, reading, trust)}.",
+        )
+        for reading, band in zip(read, expanded, strict=True)
+    ]
+    caption = f"{table.names[place]}. Worst: " + "; ".join(
+        f"{reading.name} {_worst(table, reading, trust)}" for reading in read
+    )
+    if any(band is not None for band in expanded) and (
+        budget.direction_sensor[place] not in (-1, place)
+    ):
+        other = table.names[budget.direction_sensor[place]]
+        caption += (
+            f". A speed is corrected for the direction it comes with: here that of {other}, "
+            "and where that is not trusted there is no band"
+        )
+    return pages.figure("\n".join(drawings), caption + ".")
+
+
+def _label(case, reading):
+    """What a reading's error is, with its unit."""
+    if reading.name == "direction":
+        sense = "clockwise" if case.by_bearing else "counter-clockwise"
+        return f"direction error ({reading.unit}, {sense} positive)"
+    if reading.name == "component":
+        return "component error (percent of the component)"
+    name = reading.name if reading.name != "speed" else "speed error"
+    return f"{name} ({reading.unit or 1})"
+
+
+def _chart(case, table, place, reading, expanded, last):
+    """Error, band, limit and excluded angles of one reading; the last one names the x axis."""
     order, turned = pages.laid_out(table.angles)
-    trust = table.trust[order, place]
-    errors = np.where(trust, reading.errors[order], np.nan)
-    steps = np.diff(turned)
-    gaps = np.flatnonzero(steps > WIDEST_STEP) + 1
+    trust = table.trust[:, place]
+    errors = np.where(trust, reading.errors, np.nan)[order]
+    gaps = np.flatnonzero(np.diff(turned) > WIDEST_STEP) + 1
     x, y = np.insert(turned, gaps, np.nan), np.insert(errors, gaps, np.nan)
     low = high = None
     if expanded is not None:
         wide = np.insert(expanded[order], gaps, np.nan)
         low, high = y - wide, y + wide
-    least = 2 * reading.limit if reading.limit else 0.5
     shown = errors if low is None else np.concatenate([errors, low, high])
     spans = [
-        (start - shift, stop - shift, fill)
-        for fill, here in (("doubtful", table.doubtful[:, place] & table.trust[:, place]),
-                           ("excluded", ~table.trust[:, place]))
+        (start + shift, stop + shift, fill)
+        for fill, here in (("doubtful", table.doubtful[:, place] & trust), ("excluded", ~trust))
         for start, stop in _widened(table.angles, here)
-        for shift in (0.0, 360.0)
+        for shift in (-360.0, 0.0, 360.0)  # an axis may run across north
     ]
-    *limits, step = pages.angle_axis(turned)
-    sense = ""
-    if reading.name == "direction":
-        sense = f", {'clockwise' if case.by_bearing else 'counter-clockwise'} positive"
-    unit = f" ({reading.unit}{sense})" if reading.unit else ""
-    label = reading.name if "error" in reading.name or not reading.unit else f"{reading.name} error"
-    drawing = pages.Chart(
-        x_label="bearing the wind comes from (degrees)" if case.by_bearing
-        else "direction the stream goes to (degrees)",
-        y_label=f"{table.names[place]}: {label}{unit}",
+    start, stop, step = pages.angle_axis(turned)
+    x_label = "bearing the wind comes from" if case.by_bearing else "direction the stream goes to"
+    return pages.Chart(
+        x_label=f"{x_label} (degrees)" if last else "",
+        y_label=f"{table.names[place]}: {_label(case, reading)}",
         lines=(pages.Line(x, y, low=low, high=high),),
-        x_limits=tuple(limits),
-        y_limits=pages.value_limits(shown, 0.0, least),
+        x_limits=(start, stop),
+        y_limits=pages.value_limits(shown, 0.0, 2 * reading.limit if reading.limit else 0.5),
         x_step=step,
         x_words=pages.angle_words,
         spans=tuple(spans),
         limit=reading.limit,
     )
-    described = (
-        f"{table.names[place]}: {label} against the {_kind(case)}; worst "
-        f"{_worst(table, reading, table.trust[:, place])}."
-    )
-    return pages.chart(drawing, described)
 
 
 def _budgets(case, table, budget):
@@ -718,9 +762,9 @@ def _budgets(case, table, budget):
     )
     text += pages.table(
         f"Expanded uncertainty (k = 2, about 95 percent) over the trusted {_kind(case)}s.",
-        ["Sensor", "Reading", "Unit", "Least", "Middle", "Greatest", "Greatest at",
+        ["Sensor", "Reading", "Least", "Median", "Greatest", "Greatest at",
          "Greatest part, by sector"],
-        rows, numbers=(3, 4, 5, 6),
+        rows,
     )
     chosen = [entry for entry in found if entry[0] < MOST_BUDGETS]
     tables = [_budget(case, table, budget, *entry) for entry in chosen]
@@ -739,7 +783,8 @@ def _uncertainty_row(table, budget, place, reading, expanded):
         for source in dict.fromkeys(dominant[dominant != ""])
     ]
     return [
-        table.names[place], reading.name, reading.unit,
+        table.names[place],
+        f"{reading.name} ({reading.unit})",
         *(f"{figure(expanded):.2f}" for figure in (np.nanmin, np.nanmedian, np.nanmax)),
         f"{table.angles[np.nanargmax(expanded)]:g}",
         "; ".join(parts),
@@ -754,21 +799,25 @@ def _budget(case, table, budget, place, reading, expanded):
         near = np.abs((table.angles - case.prevailing[0] + 180.0) % 360.0 - 180.0).argmin()
         if np.isfinite(expanded[near]):
             row, where = near, "the prevailing one"
+    lines = budget.budget(name, table.angles[row], reading.name)
+    shown = [line for line in lines if line["share"] >= LEAST_SHARE]
     factor = 100.0 if reading.name == "speed" else 1.0
     rows = [
         [
-            line["source"], line["distribution"], _input(case, line),
+            line["source"], line["sensor"], _input(case, line),
             f"{abs(factor * line['contribution']):.3f}", f"{100 * line['share']:.1f}",
         ]
-        for line in budget.budget(name, table.angles[row], reading.name)
+        for line in shown
     ]
     caption = (
         f"Budget of the {reading.name} of {name} at {_kind(case)} {table.angles[row]:g}, {where}: "
         f"expanded uncertainty {expanded[row]:.2f} {reading.unit}."
     )
-    heads = ["Source", "Distribution", "Standard uncertainty",
+    if len(shown) < len(lines):
+        caption += f" Sources below {100 * LEAST_SHARE:g} percent of the variance are not listed."
+    heads = ["Source", "Of", "Standard uncertainty",
              f"Contribution ({reading.unit})", "Share of the variance (percent)"]
-    return pages.table(caption, heads, rows, numbers=(2, 3, 4))
+    return pages.table(caption, heads, rows, numbers=(3, 4))
 
 
 def _input(case, line):
@@ -776,16 +825,15 @@ def _input(case, line):
     value, unit = line["standard_uncertainty"], line["unit"]
     if line["source"] in ("numerical error", "between the table's angles"):
         return "from the table"
-    if unit == "1":
-        return f"{100 * value:.3g} percent"
-    return f"{value:.3g} {case.length_unit if unit == 'length' else unit}"
+    value, unit = (100 * value, "percent") if unit == "1" else (value, unit)
+    unit = case.length_unit if unit == "length" else unit
+    return f"{value:.3g} {unit} ({line['distribution']})"
 
 
 def _rerun(case):
     name = Path(case.file).name
-    bodies = pages.bullets(_body_line(body) for body in case.bodies)
     text = pages.paragraphs(
         f"Save what follows as {name} and run: offbody survey {name} --out FOLDER "
         f"(offbody {__version__}). Files of points that it names are not repeated here."
     )
-    return bodies + text + pages.verbatim(case.text)
+    return text + pages.verbatim(case.text)

@@ -1,9 +1,9 @@
 """What stands round the bodies: nothing, a ground plane, two duct walls, or copies in a row.
 
-Plane walls are mirrors and copies repeat, so they change the kernel and nothing else. Each kind says
-so by two numbers: ``mirror``, the height of a plane in which the flow is reflected, and ``period``,
-the distance along y at which all of it repeats. Duct walls a distance H apart are a mirror and the
-period 2 H. ``offbody.flow`` turns the two into image flows.
+Plane walls are mirrors and copies repeat, so they change the kernel and nothing else. Each kind
+says so by two numbers: ``mirror``, the height of a plane in which the flow is reflected, and
+``period``, the distance along y at which all of it repeats. Duct walls a distance H apart are a
+mirror and the period 2 H. ``offbody.images`` turns the two into image flows.
 """
 
 from dataclasses import dataclass
@@ -178,7 +178,7 @@ class Row:
         return self.pitch
 
     def admit(self, directions):
-        """Directions in degrees; those along the row are refused later if bodies turn the stream."""
+        """Directions in degrees; one along the row is refused later if bodies turn the stream."""
         return directions
 
 

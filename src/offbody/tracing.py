@@ -52,7 +52,7 @@ def _one_way(velocity, z, length, domain):
 
 
 def _right_hand_side(velocity, sign):
-    """Unit velocity, slowed near rest; at rest inside a body, so that a step into one is refused."""
+    """Unit velocity, slowed near rest; none inside a body, so that a step into one is refused."""
 
     def derivative(_, state):
         w = np.nan_to_num(velocity(_together(state)))

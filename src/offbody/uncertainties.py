@@ -762,10 +762,11 @@ class _Drawn:
         parts = []
         for first in range(0, self.draws, SENSORS_AT_ONCE):
             places = [
-                _moved(table.sensors[sensor], move)
+                replace(table.sensors[sensor].moved(move.real, move.imag), name=None)
                 for move in moves[first : first + SENSORS_AT_ONCE]
             ]
-            parts.append(getattr(survey(table.model, places, **angles), column))
+            booms = [table.booms[sensor]] * len(places)
+            parts.append(getattr(survey(table.model, places, booms=booms, **angles), column))
         return np.concatenate(parts, axis=1)
 
 
@@ -831,7 +832,7 @@ class _Sources:
         along = np.array([np.real(step), np.imag(step)])
         with np.errstate(divide="ignore", invalid="ignore"):
             share = table.speed_ratio_gradient[:, place] @ along / table.speed_ratio[:, place]
-        turn = _direction_gradient(table, place) @ along
+        turn = table.direction_error_gradient[:, place] @ along
         self._add(name, unit, distribution, place, share, turn, displacement)
 
     def _arm(self, place, foot):
@@ -940,37 +941,6 @@ def _words(argument):
 def _root_sum(parts, size):
     """Root of the sum of squares, (size,); 0 of none."""
     return np.sqrt(sum((part**2 for _, part in parts), np.zeros(size)))
-
-
-def _direction_gradient(table, place):
-    """Change (n, 2) of a sensor's direction error, degrees per unit of length it moves."""
-    sensor = table.sensors[place]
-    velocity = table.model.velocity(sensor.points, table.directions)
-    gradient = table.model.velocity_gradient(sensor.points, table.directions)
-
-    def read(u, v):
-        flow = u + 1j * v
-        return flow @ np.asarray(sensor.direct) + flow.conj() @ np.asarray(sensor.turned)
-
-    sensed = read(velocity[..., 0], velocity[..., 1])
-    changes = [read(gradient[..., 0, axis], gradient[..., 1, axis]) for axis in (0, 1)]
-    with np.errstate(divide="ignore", invalid="ignore"):
-        turns = np.degrees((np.stack(changes, axis=-1) / sensed[:, None]).imag)
-    turns[np.isnan(table.direction_error[:, place])] = np.nan
-    return -turns if table.by_bearing else turns
-
-
-def _moved(sensor, move):
-    """The same sensor in another place, without a name."""
-    shift = np.array([move.real, move.imag])
-    if sensor.kind == "point":
-        return replace(sensor, x=sensor.x + shift[0], y=sensor.y + shift[1], name=None)
-    if sensor.kind == "disc":
-        return replace(sensor, centre=np.array(sensor.centre) + shift, name=None)
-    if sensor.kind == "path":
-        start, end = np.array(sensor.start) + shift, np.array(sensor.end) + shift
-        return replace(sensor, start=start, end=end, name=None)
-    return replace(sensor, paths=[_moved(path, move) for path in sensor.paths], name=None)
 
 
 def _paired(table, given):
