@@ -230,6 +230,11 @@ class Case:
             angles = {kind: self.angles}
             return ob.survey(model, self.sensors, booms=self.boom_sections, **angles)
 
+    @property
+    def unstated_tolerances(self):
+        """The tolerances that the case leaves out, in words."""
+        return [name.replace("_", " ") for name in _TOLERANCES if name not in self.tolerances]
+
     def uncertainty(self, table):
         """What the case's tolerances make of its survey, or None where it states none."""
         if not self.tolerances:

@@ -162,7 +162,7 @@ def _from_coefficients(panels, coefficients):
     half = 0.5 * (panels.ends[:, 1] - panels.ends[:, 0])
     local = (panels.nodes.reshape(-1, panels.order) - middle[:, None]) / half[:, None]
     basis = legendre.legvander(local, coefficients.shape[-1] - 1)
-    values = (basis @ coefficients[..., None])[..., 0].reshape(len(coefficients), -1)
+    values = (basis @ coefficients[..., None]).reshape(len(coefficients), len(panels.nodes))
     return coefficients, -values * panels.tangents * panels.weights
 
 

@@ -43,6 +43,7 @@ DIRECTION_LIMIT = 1.0  # degrees; a rule of this project, for sensors that read 
 
 RINGS = 24  # lengths of a scan,
 FINE_RINGS = 10  # and of the second one
+TRIAL_LENGTHS = 100  # among which the shortest that stands clear is sought
 AROUND = {1: 120, 2: 90, 3: 36}  # angles of a scan, for one boom or for sets of two or three
 GRID = {1: 2500, 2: 350, 3: 70}  # places of a scan in an area
 DISTINCT = 12.0  # degrees between booms that count as another choice
@@ -1062,17 +1063,17 @@ class _BoomSearch(_Search):
         return asked.result(self.where, mounts, site.limit, _merged(curve), search, notes)
 
     def _first_lengths(self):
-        """Lengths of the first scan, from the shortest that stands anywhere to the greatest."""
+        """Lengths of the first scan, from the shortest that may stand somewhere to the greatest."""
         least = max(self.where.least, 1e-3 * self.size)
-        trial = np.geomspace(least, self.size, 300) if least < self.size else np.array([self.size])
+        if least >= self.size:
+            return np.array([self.size])
+        trial = np.geomspace(least, self.size, TRIAL_LENGTHS)
         z = self.foot + trial[:, None] * np.exp(1j * self.headings)
-        off = self.site.wall_distance(z.ravel()) >= max(self.site.clearance, self.room)
-        stands = off & ~inside(self.site.asked.model, _pairs(z.ravel()))
-        stands = stands.reshape(z.shape).any(axis=1)
-        if not stands.any():
-            return trial[-1:]
-        least = trial[stands.argmax()]
-        return np.geomspace(least, self.size, RINGS) if least < self.size else trial[-1:]
+        stands = ~inside(self.site.asked.model, _pairs(z))
+        room = max(self.site.clearance, self.room)
+        stands[stands] = self.site.wall_distance(z[stands]) >= room
+        first = int(stands.any(axis=1).argmax())
+        return np.geomspace(trial[max(first - 1, 0)], self.size, RINGS)
 
     def _scan(self, lengths):
         z = np.exp(1j * self.headings)

@@ -76,12 +76,12 @@ pre {{ font: .8125rem/1.45 "DejaVu Sans Mono", Consolas, monospace; white-space:
 @page {{ size: A4; margin: 17mm 16mm 18mm; }}
 @media (max-width: 46rem) {{ section {{ display: block; }} h2 {{ margin-bottom: .7rem; }} }}
 @media print {{
-  body {{ padding: 0; max-width: none; font-size: 10pt; }}
+  html {{ font-size: 10pt; }}
+  body {{ padding: 0; max-width: none; }}
   header {{ margin-bottom: 1rem; }}
   section {{ display: block; padding: .5rem 0 1.2rem; }}
   h2 {{ margin-bottom: .5rem; break-after: avoid; }}
-  h1 {{ font-size: 18pt; }}
-  .lead {{ font-size: 12.5pt; }}
+  figure, table {{ margin: .8rem 0; }}
   .tall svg {{ max-height: 118mm; }}
   .tall img {{ max-height: 150mm; max-width: 100%; width: auto; }}
   table, li, .key {{ break-inside: avoid; }}
@@ -486,7 +486,7 @@ def plan(plan, description):
         low[1], high[1] = min(plan.walls[0], low[1]), max(plan.walls[-1], high[1])
     scale = min((WIDTH - 40) / (high - low)[0], PLAN_HEIGHT / (high - low)[1])
     middle = (low + high) / 2
-    height = scale * (high - low)[1] + 66
+    height = scale * (high - low)[1] + 82
     to_paper = _placing(scale, middle, (WIDTH / 2, 12 + scale * (high - low)[1] / 2))
     parts = [_wall(float(to_paper((0.0, wall))[1]), number) for number, wall in
              enumerate(plan.walls)]
@@ -516,6 +516,10 @@ def _ringed(plan, points, middle, description):
     parts = []
     for number, ring in enumerate(plan.rings):
         near = inner + number * (RING_BREADTH + RING_GAP)
+        parts.append(
+            f'<circle cx="{centre[0]:g}" cy="{centre[1]:g}" r="{near + RING_BREADTH / 2:g}" '
+            f'fill="none" stroke="{PALE}"/>'
+        )
         for start, stop, fill in ring.sectors:
             parts.append(_sector(centre, near, near + RING_BREADTH, start, stop, fill))
         x, y = _polar(centre, near + RING_BREADTH / 2, 45.0)

@@ -490,10 +490,10 @@ def _verdict(case, table, budget):
     known = [each for each in expanded if each is not None]
     if known:
         best = np.fmin.reduce(known)
-        text += (
-            f" Corrected by this survey, expect \u00b1{np.nanmedian(best):.1f} percent (k = 2) "
-            "from the best of them."
-        )
+        text += f" Corrected by this survey, expect \u00b1{np.nanmedian(best):.2g} percent (k = 2)"
+        text += " of it." if len(table.names) == 1 else " of the best of them."
+        if "speed calibration" in case.unstated_tolerances:
+            text += " The sensors' own calibration is not in that: the case does not state it."
     return text
 
 
@@ -760,6 +760,10 @@ def _budgets(case, table, budget):
         "Of the speed and direction once corrected by this survey, combined to first order as "
         "JCGM 100 (GUM) asks; the scatter of the record itself is not in it."
     )
+    if case.unstated_tolerances:
+        text += pages.paragraphs(
+            f"Not stated by the case, and not counted: {', '.join(case.unstated_tolerances)}."
+        )
     text += pages.table(
         f"Expanded uncertainty (k = 2, about 95 percent) over the trusted {_kind(case)}s.",
         ["Sensor", "Reading", "Least", "Median", "Greatest", "Greatest at",
