@@ -132,10 +132,12 @@ def _draw_lee(axes, model, y, spans, direction):
     from matplotlib.patches import Polygon
 
     far = 3.0 * sum(spans)
-    for body, outline in enumerate(model.outlines):
-        if outline.edge is not None:
-            continue
-        ends = _leaving(model, body, direction)
+    leaving = [
+        _leaving(model, body, direction)
+        for body, outline in enumerate(model.outlines) if outline.edge is None
+    ]
+    leaving += [bracing.ends(np.array([direction]))[0] for bracing in model.bracings]
+    for ends in leaving:
         ahead = DOUBTFUL_START * (ends[0] - ends[1]) @ _along(direction + 90.0)
         margin = _strip(ends, direction, DOUBTFUL_HALF_ANGLE, far, ahead)
         wake = _strip(ends, direction, WAKE_HALF_ANGLE, far)
@@ -183,6 +185,10 @@ def _draw_bodies(axes, case, y):
         points = body.outline.points(2000)
         for shift in _shifts(case.surroundings, y):
             axes.fill(*(points + shift).T, color=BODY, linewidth=0.5, zorder=5)
+    for face in case.bracings.values():
+        for shift in _shifts(case.surroundings, y):
+            line = np.array([face.start, face.end]) + shift
+            axes.plot(*line.T, color=BODY, linewidth=1.0, linestyle=(0, (3, 2)), zorder=4)
     for boom in case.booms:
         if boom is not None:
             axes.plot(*boom.T, color=BODY, linewidth=1.4, zorder=4, solid_capstyle="round")
@@ -198,10 +204,13 @@ def _draw_sensors(axes, case, model):
     for number, sensor in enumerate(case.sensors, start=1):
         for path in getattr(sensor, "paths", [sensor] if sensor.kind == "path" else []):
             axes.plot(*np.transpose([path.start, path.end]), color=INK, linewidth=2.0, zorder=6)
-        if sensor.kind == "disc":
+        pair = [sensor.cup, sensor.vane] if sensor.kind == "cup and vane" else [sensor]
+        for disc in (part for part in pair if part.kind == "disc"):
             axes.add_patch(Circle(
-                sensor.centre, sensor.radius, facecolor="none", edgecolor=INK, zorder=6
+                disc.centre, disc.radius, facecolor="none", edgecolor=INK, zorder=6
             ))
+        for part in pair[1:]:
+            axes.plot(*part.centre, "o", markersize=3, color="white", markeredgecolor=INK, zorder=7)
         place = tuple(np.round(place_of(sensor, model), 9))
         axes.plot(*place, "o", markersize=3, color="white", markeredgecolor=INK, zorder=7)
         tags.setdefault(place, []).append(number)

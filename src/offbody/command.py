@@ -79,6 +79,11 @@ def _parser():
     _add_verb(verbs, "survey", _survey, "what every sensor of a case reads in every wind")
     _add_verb(verbs, "field", _field, "the velocity on a dense grid round the bodies of a case")
     demo = _add_verb(verbs, "demo", _demo, "the survey of a built-in case, which it writes out too")
+    demo.add_argument(
+        "name", metavar="NAME", nargs="?", choices=tuple(reports.BUILT_IN_CASES), default="mast",
+        help="mast (if left out): a tubular mast with booms; lattice: a triangular lattice tower; "
+             "duct: a strut-mounted probe in a duct",
+    )
     demo.set_defaults(out="offbody-demo")
     _add_correct(verbs)
     return parser
@@ -190,9 +195,10 @@ def _survey(options):
 
 
 def _demo(options):
-    with resources.as_file(reports.BUILT_IN_CASE) as path:
+    source = reports.BUILT_IN_CASES[options.name]
+    with resources.as_file(source) as path:
         case = read_case(path)
-    return _write_survey(case, options, source=reports.BUILT_IN_CASE)
+    return _write_survey(case, options, source=source)
 
 
 def _write_survey(case, options, source=None):

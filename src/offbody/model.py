@@ -576,6 +576,8 @@ class Model:
 
     def _lee(self, body, directions):
         """Start (counter-clockwise) and length of the lee wall of a body with a wake."""
+        if not len(directions):
+            return np.zeros((2, 0))
         left, right = self._lees(directions)[body].arcs.T
         return right, (left - right) % self._arcs[body].length
 
@@ -852,7 +854,7 @@ class Model:
         first = self._panels.starts[:-1] * self.order
         force = (1j * np.add.reduceat(moment, first, axis=1)).conj()
         for body, wake in enumerate(self.wakes):
-            if wake is not None:
+            if wake is not None and len(flat):
                 stream, lee = np.exp(1j * np.radians(flat)), self._lees(flat)[body]
                 if wake.has_base:
                     pressure = self.surface(body, flat).pressure_coefficient

@@ -45,6 +45,7 @@ RINGS = 24  # lengths of a scan,
 FINE_RINGS = 10  # and of the second one
 TRIAL_LENGTHS = 100  # among which the shortest that stands clear is sought
 AROUND = {1: 120, 2: 90, 3: 36}  # angles of a scan, for one boom or for sets of two or three
+LEAST_AROUND = 36
 GRID = {1: 2500, 2: 350, 3: 70}  # places of a scan in an area
 DISTINCT = 12.0  # degrees between booms that count as another choice
 DISTINCT_SHARE = 0.1  # the same in an area, of its size
@@ -569,36 +570,74 @@ class _Site:
         return clear
 
     def sensors(self, z):
-        """What the mounts at z carry, end to end."""
-        return [sensor.moved(place.real, place.imag) for place in z for sensor in self.carried]
+        """What the mounts at z carry, end to end, without names."""
+        return [sensor.moved(*place) for place in _pairs(z) for sensor in self._nameless]
 
-    def read(self, z, directions, slopes=True, trust=True):
-        """Errors (q, n, m) of every part, with signs; their slopes (q, n, m, 2); trust (n, m)."""
-        carried = len(self.carried)
-        samples = sum(len(sensor.points) for sensor in self.carried)
+    @cached_property
+    def _nameless(self):
+        return tuple(replace(sensor, name=None) for sensor in self.carried)
+
+    @cached_property
+    def _lighter(self):
+        """What a scan reads in place of discs, and the shares (s, k) in which it is averaged.
+
+        Four points at the root of a half of the radius: exact for a speed of third degree.
+        """
+        points, shares = [], np.zeros((0, len(self.carried)))
+        for place, sensor in enumerate(self._nameless):
+            own = [sensor]
+            if sensor.kind == "disc":
+                ring = sensor.radius * np.sqrt(0.5) * np.array([1, 1j, -1, -1j])
+                middle = _pairs(ring) + sensor.centre
+                own = [PointSensor(*point, reads=sensor.reads) for point in middle]
+            points += own
+            share = np.eye(len(self.carried))[[place] * len(own)] / len(own)
+            shares = np.concatenate([shares, share])
+        return tuple(points), shares
+
+    @property
+    def samples(self):
+        """How many points a scan reads at a place."""
+        return sum(len(sensor.points) for sensor in self._lighter[0])
+
+    def read(self, z, directions, slopes=True, trust=True, exactly=True):
+        """Errors (q, n, m) of every part, with signs; their slopes (q, n, m, 2); trust (n, m).
+
+        If not exactly, as a scan does.
+        """
+        carried, shares = self._lighter
+        if exactly:
+            carried, shares = self._nameless, np.eye(len(self.carried))
+        samples = sum(len(sensor.points) for sensor in carried)
         at_once = max(1, READINGS_AT_ONCE // (len(directions) * samples))
         errors = np.empty((len(self._parts), len(directions), len(z)))
         gradients = np.empty((*errors.shape, 2)) if slopes else None
         trusted = np.ones(errors.shape[1:], bool)
         for first in range(0, len(z), at_once):
             part = slice(first, first + at_once)
+            places = _pairs(z[part])
             table = survey(
-                self.asked.model, self.sensors(z[part]), directions,
+                self.asked.model,
+                [sensor.moved(*place) for place in places for sensor in carried],
+                directions,
                 reynolds=self.asked.reynolds if trust else None,
             )
+            shape = (len(directions), len(places), len(carried))
             if trust:
-                trusted[:, part] = table.trust.reshape(len(directions), -1, carried).all(axis=2)
-            for row, (place, quantity) in enumerate(self._parts):
-                mine = slice(place, None, carried)
-                if quantity == "speed":
-                    errors[row, :, part] = table.speed_ratio[:, mine] - 1
-                    if slopes:
-                        gradients[row, :, part] = table.speed_ratio_gradient[:, mine]
-                else:
-                    scale = self.limit / self.direction_limit
-                    errors[row, :, part] = scale * table.direction_error[:, mine]
-                    if slopes:
-                        gradients[row, :, part] = scale * table.direction_error_gradient[:, mine]
+                trusted[:, part] = table.trust.reshape(shape).all(axis=2)
+            for row, (sensor, quantity) in enumerate(self._parts):
+                mine = np.flatnonzero(shares[:, sensor])
+                share = shares[mine, sensor]
+                column, slope, scale = (
+                    (table.speed_ratio - 1, "speed_ratio_gradient", 1.0)
+                    if quantity == "speed" else
+                    (table.direction_error, "direction_error_gradient",
+                     self.limit / self.direction_limit)
+                )
+                errors[row, :, part] = scale * column.reshape(shape)[..., mine] @ share
+                if slopes:
+                    values = getattr(table, slope).reshape(*shape, 2)[:, :, mine]
+                    gradients[row, :, part] = scale * np.einsum("nmsa,s->nma", values, share)
         return errors, gradients, trusted
 
     def errors(self, z):
@@ -664,7 +703,7 @@ class _Scan:
         self.site, self.shape, self.wraps = site, places.shape, wraps
         self.places = places.ravel()
         self.clear = site.clear(self.places, room)
-        readings = site.read(self.places[self.clear], site.asked.directions)
+        readings = site.read(self.places[self.clear], site.asked.directions, exactly=False)
         self.errors = self._spread(_greatest(readings[0], readings[2]), np.inf).T
         self.hopes = self._hopes(readings, half_steps.reshape(-1, 2))
 
@@ -764,7 +803,7 @@ class _Search:
     def _judged(self, variables):
         """The judgement of one set, or None where it may not stand."""
         site, z = self.site, self.place(variables)
-        tolerance = 1e-9 * self.size
+        tolerance = 0.5 * self.room
         if not site.clear(z, self.room - tolerance).all() or self._apart(z) < site.spacing - (
             tolerance
         ):
@@ -810,7 +849,7 @@ class _Search:
         sensors = [
             replace(sensor, name=mount if own is None else f"{mount} {own}")
             for mount, place in zip(mounts, z, strict=True)
-            for sensor, own in zip(site.sensors([place]), self._own_names, strict=True)
+            for sensor, own in zip(site.sensors(np.array([place])), self._own_names, strict=True)
         ]
         return Mount(
             sensors=tuple(sensors),
@@ -1011,7 +1050,8 @@ class _BoomSearch(_Search):
 
     def _headings(self):
         """The headings of a scan, the step between them, and whether they close."""
-        count, asked = AROUND[self.site.asked.count], self.site.asked
+        asked = self.site.asked
+        count = max(LEAST_AROUND, int(AROUND[asked.count] / np.sqrt(self.site.samples)))
         if self.where.sector is None:
             return np.arange(count) * 2 * np.pi / count, 2 * np.pi / count, True
         first, last = self.where.sector
@@ -1308,8 +1348,8 @@ class _Fenced:
     def clear(self, z, room):
         return self.within & self.site.clear(z, room)
 
-    def read(self, z, directions):
-        return self.site.read(z, directions)
+    def read(self, z, directions, **how):
+        return self.site.read(z, directions, **how)
 
 
 # --- ports ----------------------------------------------------------------------------------------

@@ -90,7 +90,7 @@ pre {{ font: .8125rem/1.45 "DejaVu Sans Mono", Consolas, monospace; white-space:
 }}
 """
 
-PATTERNS = f"""<svg class="patterns" aria-hidden="true" focusable="false"><defs>
+PATTERNS = f"""<svg class="patterns" aria-hidden="true"><defs>
 <pattern id="hatch" width="6" height="6" patternUnits="userSpaceOnUse"
  patternTransform="rotate(45)"><rect width="6" height="6" fill="#fff"/>
 <rect width="2" height="6" fill="{ORANGE}"/></pattern>

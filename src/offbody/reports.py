@@ -35,7 +35,12 @@ LEAST_SHARE = 0.001  # of the variance, for a line of a budget
 OWN_FILES = re.compile(
     r"summary\.txt|report\.html|survey\.(csv|json)|field\.npz|(map|field|sensors)(-[-.\w]+)?\.png"
 )
-BUILT_IN_CASE = resources.files("offbody") / "demo.toml"
+BUILT_IN_CASES = {
+    name: resources.files("offbody") / file
+    for name, file in (
+        ("mast", "demo.toml"), ("lattice", "demo_lattice.toml"), ("duct", "demo_duct.toml"),
+    )
+}
 
 CAUTIONS = (
     "The flow is taken as two-dimensional, steady, of low speed and without turbulence or shear: "
@@ -120,9 +125,9 @@ def _refuse_standing(path, overwrite):
 
 
 def _is_own(entry):
-    """Whether a file is offbody's to replace: a result, or its built-in case, not edited since."""
+    """Whether a file is offbody's to replace: a result, or a built-in case, not edited since."""
     if entry.name == "case.toml":
-        return entry.read_bytes() == BUILT_IN_CASE.read_bytes()
+        return entry.read_bytes() in [case.read_bytes() for case in BUILT_IN_CASES.values()]
     return OWN_FILES.fullmatch(entry.name) is not None
 
 
@@ -237,6 +242,10 @@ def summary(case, table, cautions=()):
         lines += textwrap.wrap(
             _body_line(body), PAGE_WIDTH, initial_indent="  ", subsequent_indent="      "
         )
+    for line in bracing_lines(case):
+        lines += textwrap.wrap(
+            line, PAGE_WIDTH, initial_indent="  ", subsequent_indent="      "
+        )
     lines += ["", "SENSORS (speeds and directions sensed, against the undisturbed stream)"]
     for place in range(len(table.sensors)):
         lines += _sensor_lines(case, table, place)
@@ -285,6 +294,15 @@ def _body_line(body):
         table = "against direction" if isinstance(given, tuple) else f"{given:g}"
         wake = f"drag coefficient {table}, wake displacement included"
     return f"{body.name}: {body.outline.name}; {wake}"
+
+
+def bracing_lines(case):
+    """A line on each braced face."""
+    for name, face in case.bracings.items():
+        yield (
+            f"{name}: bracing {face.length:g} {case.length_unit} long; drag coefficient "
+            f"{face.drag_coefficient:g}, spread along it; the flow passes through"
+        )
 
 
 def _sensor_lines(case, table, place):
@@ -348,6 +366,14 @@ def _findings(case, table, place):
             yield f"worst {reading.name}", _worst(table, reading, trust)
         elif trust.any():
             yield reading.name, _range(reading, trust)
+    if np.isfinite(table.yaw[trust, place]).any():
+        yaw = table.yaw[trust, place]
+        yield "yaw on its axis", (
+            f"{np.nanmin(yaw):+.2f} to {np.nanmax(yaw):+.2f} degrees where trusted"
+        )
+    if table.booms[place] is not None and trust.any():
+        part = 100 * (table.boom_speed_ratio[trust, place] - 1)
+        yield "of it its own boom's", f"{part.min():+.2f} to {part.max():+.2f} percent of the speed"
     yield "trusted", f"{trust.mean():.0%} of the angles"
     if (trust & doubtful).any():
         yield "trusted, but doubtful", f"{_sectors(table, trust & doubtful)}: at the edge of a lee"
@@ -561,7 +587,10 @@ def _plan(case, table):
     ringed = () if case.surroundings.walls else range(min(len(table.names), MOST_RINGS))
     drawing = pages.Plan(
         bodies=bodies,
-        booms=[boom for boom in case.booms if boom is not None],
+        booms=[
+            *(boom for boom in case.booms if boom is not None),
+            *(np.array([face.start, face.end]) for face in case.bracings.values()),
+        ],
         markers=[_marker(table, place) for place in range(len(table.names))],
         rings=[pages.Ring(str(place + 1), _ring(case, table, place)) for place in ringed],
         walls=case.surroundings.walls,
@@ -589,7 +618,7 @@ def _plan(case, table):
     described = f"Plan of {', '.join(body.name for body in case.bodies)} with sensors {who}."
     return pages.figure(
         pages.plan(drawing, described), caption, key if ringed else (), tall=True
-    ) + pages.bullets(_body_line(body) for body in case.bodies)
+    ) + pages.bullets([*map(_body_line, case.bodies), *bracing_lines(case)])
 
 
 def _marker(table, place):
