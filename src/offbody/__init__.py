@@ -33,6 +33,7 @@ from offbody.sensors import (
 from offbody.separations import Separation, separation
 from offbody.surroundings import Duct, Ground, OpenStream, Row
 from offbody.surveys import Survey, survey
+from offbody.sweeps import Swept, sweep
 from offbody.uncertainties import (
     InfluenceQuantity,
     MonteCarlo,
@@ -70,6 +71,7 @@ __all__ = [
     "Row",
     "Separation",
     "Survey",
+    "Swept",
     "Tolerance",
     "Uncertainty",
     "Wake",
@@ -90,6 +92,7 @@ __all__ = [
     "separation",
     "solve",
     "survey",
+    "sweep",
     "threads",
     "to_bearing",
     "uncertainty",

@@ -290,13 +290,16 @@ class Case:
         return np.stack([low, high], axis=-1)
 
 
-def read_case(path):
+def read_case(path, entries=None):
     """The case that a TOML file describes.
 
     Parameters
     ----------
     path : str or path-like
         The case file; see the head of this module for its keys.
+    entries : dict, optional
+        What the file would hold, in place of it: plain numbers, texts, lists and dicts. The path is
+        then only what messages name, and what paths within the case are relative to.
 
     Returns
     -------
@@ -317,7 +320,7 @@ def read_case(path):
     ['cup', 'propeller vane', 'sonic']
     """
     reading = _Reading(Path(path))
-    text, entries = _read_entries(Path(path))
+    text, entries = read_entries(Path(path)) if entries is None else ("", entries)
     top = _Table(reading, "", entries)
     title = top.text("title", Path(path).stem)
     length_unit = top.choice("length_unit", LENGTH_UNITS)
@@ -360,7 +363,7 @@ def read_case(path):
     )
 
 
-def _read_entries(path):
+def read_entries(path):
     """The text of a case file, and its bare TOML."""
     try:
         raw = path.read_bytes()

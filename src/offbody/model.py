@@ -510,7 +510,7 @@ class Model:
 
     def _wall_normal_speeds(self, directions):
         """(directions, N) outward normal speed on the walls."""
-        if not any(self.wakes) or not len(directions):
+        if not any(self.wakes):
             return np.zeros((len(directions), self.node_count))
         return blown_speeds(self, self._lees(directions))
 
@@ -522,8 +522,8 @@ class Model:
             for row, one in enumerate(new.tolist()):
                 self._settled[one] = {b: lee.at([row]) for b, lee in found.items()}
         kept = [self._settled[one] for one in directions.tolist()]
-        bodies = kept[0] if kept else ()
-        return {b: Lee.joined([lees[b] for lees in kept]) for b in bodies}
+        bodies = [body for body, wake in enumerate(self.wakes) if wake is not None]
+        return {body: Lee.joined([lees[body] for lees in kept]) for body in bodies}
 
     # --- places on the walls ----------------------------------------------------------------
 
@@ -576,8 +576,6 @@ class Model:
 
     def _lee(self, body, directions):
         """Start (counter-clockwise) and length of the lee wall of a body with a wake."""
-        if not len(directions):
-            return np.zeros((2, 0))
         left, right = self._lees(directions)[body].arcs.T
         return right, (left - right) % self._arcs[body].length
 
@@ -854,7 +852,7 @@ class Model:
         first = self._panels.starts[:-1] * self.order
         force = (1j * np.add.reduceat(moment, first, axis=1)).conj()
         for body, wake in enumerate(self.wakes):
-            if wake is not None and len(flat):
+            if wake is not None:
                 stream, lee = np.exp(1j * np.radians(flat)), self._lees(flat)[body]
                 if wake.has_base:
                     pressure = self.surface(body, flat).pressure_coefficient

@@ -1545,7 +1545,10 @@ class _Ports:
             rising = np.append((slopes[0] - slopes[1]) * sense > 0, False)
             last_trusted, last_rising = int(trusted.argmin()), int(rising.argmin())
             if last_rising <= last_trusted and last_rising < len(line):
-                ends.append(brentq(slope, line[last_rising - 1], line[last_rising], xtol=1e-9))
+                before, after = line[last_rising - 1], line[last_rising]
+                # At the turn itself rounding decides: it may be there already.
+                turns = slope(before) * slope(after) < 0
+                ends.append(brentq(slope, before, after, xtol=1e-9) if turns else float(after))
                 reasons.append("the slope turns")
             else:
                 ends.append(float(line[min(last_trusted, len(line)) - 1]))

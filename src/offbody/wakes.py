@@ -205,6 +205,8 @@ class Lee:
     @staticmethod
     def joined(lees):
         """Several, end to end."""
+        if not lees:
+            return Lee(np.zeros((0, 2)), np.zeros((0, 3)), np.zeros(0))
         parts = zip(*((one.arcs, one.flux, one.base_pressure) for one in lees), strict=True)
         return Lee(*map(np.concatenate, parts))
 
