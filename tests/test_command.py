@@ -92,7 +92,7 @@ def test_a_field_is_the_dense_grid_with_its_axes_and_its_picture(case, tmp_path)
         stream = np.exp(1j * np.radians(kept["stream_direction"][0]))
         # W = conj(U) - a^2 U / z^2: the circle theorem, Milne-Thomson.
         exact = np.conj(stream) - stream * (0.2 / z) ** 2
-        exact = np.where(np.abs(z) < 0.2, np.nan, exact)
+        exact = np.where(np.abs(z) < 0.2, complex(np.nan, np.nan), exact)
         np.testing.assert_allclose(kept["u"][0], exact.real, rtol=0, atol=1e-9)
         np.testing.assert_allclose(kept["v"][0], -exact.imag, rtol=0, atol=1e-9)
         # Nobody has said which wind to show: it is the one the cup reads worst, facing it or from

@@ -9,6 +9,7 @@ from offbody.compressibility import compressible_pressure, critical_mach
 from offbody.corrections import Corrected, Correction, Reason
 from offbody.errors import AccuracyWarning, InputError
 from offbody.model import Model, WakeFlow, inside, solve
+from offbody.mounts import Mount, Mounts, PortMount, Reach, Stretch, best_mounts
 from offbody.outlines import (
     Outline,
     circle,
@@ -59,6 +60,8 @@ __all__ = [
     "InputError",
     "Model",
     "MonteCarlo",
+    "Mount",
+    "Mounts",
     "MultiHoleProbe",
     "Normal",
     "OpenStream",
@@ -66,10 +69,13 @@ __all__ = [
     "PathSensor",
     "PitotTube",
     "PointSensor",
+    "PortMount",
+    "Reach",
     "Reason",
     "Rectangular",
     "Row",
     "Separation",
+    "Stretch",
     "Survey",
     "Swept",
     "Tolerance",
@@ -78,6 +84,7 @@ __all__ = [
     "WakeFlow",
     "WallPort",
     "__version__",
+    "best_mounts",
     "circle",
     "compressible_pressure",
     "critical_mach",

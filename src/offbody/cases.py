@@ -93,9 +93,9 @@ A case is a TOML file. Every key, with [] round what may be left out:
 
 ``turned`` is in degrees, counter-clockwise: about the centre, the nose, or the origin of the
 points. A case says its angles one way: with ``direction`` in place of ``bearing`` in every key,
-or the other way round, never both. ``nose_bearing`` is where a nose points, ``nose_direction`` where
-a stream that meets it head on goes to. Tables in an error message count from one: ``body[2]`` is
-the second ``[[body]]``.
+or the other way round, never both. ``nose_bearing`` is where a nose points, ``nose_direction``
+where a stream that meets it head on goes to. Tables in an error message count from one:
+``body[2]`` is the second ``[[body]]``.
 """
 
 import contextlib

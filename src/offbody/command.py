@@ -15,6 +15,7 @@ import offbody as ob
 from offbody import charts, records, reports
 from offbody.cases import read_case
 from offbody.errors import AccuracyWarning, InputError
+from offbody.survey_pages import survey_page
 
 DONE, REFUSED, INTERRUPTED = 0, 2, 130
 NODES_AT_ONCE = 20_000  # of a dense grid, between two moves of the progress bar
@@ -228,7 +229,7 @@ def _write_survey(case, options, source=None):
                 _draw_map(folder / picture, case, model, x, y, velocity, angle)
                 maps.append((angle, (folder / picture).read_bytes()))
         _advance(bar, "writing the report")
-        report = reports.survey_page(case, table, budget, maps, no_pictures, cautions)
+        report = survey_page(case, table, budget, maps, no_pictures, cautions)
         (folder / "report.html").write_text(report, encoding="utf-8")
         files = sorted(entry.name for entry in folder.iterdir())
     return f"{page}\n{_closing(options.out, files, no_pictures)}"

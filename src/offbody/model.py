@@ -1037,7 +1037,10 @@ def _as_wakes(given, bodies):
 
 
 def _as_bracings(given):
-    bracings = (given,) if isinstance(given, Bracing) else tuple(given or ())
+    if given is None:
+        return ()
+    several = isinstance(given, Sequence) and not isinstance(given, str)
+    bracings = tuple(given) if several else (given,)
     for bracing in bracings:
         if not isinstance(bracing, Bracing):
             raise InputError(f"bracings must hold ob.Bracing(...), got {bracing!r}")

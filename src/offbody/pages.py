@@ -22,6 +22,7 @@ LABEL_HEIGHT = 20.0  # more, where the x axis has a label
 PLAN_RADIUS = 262.0  # of the outermost ring
 PLAN_HEIGHT = 420.0  # at most, of a plan without rings
 RING_BREADTH, RING_GAP = 9.0, 5.0
+LONG = 12  # rows of a table, beyond which a sheet of paper may end within it
 FEW = 40  # points of a line, up to which each is marked by a dot
 
 # What a sector or a stretch of an axis can be, and how it is filled.
@@ -84,7 +85,8 @@ pre {{ font: .8125rem/1.45 "DejaVu Sans Mono", Consolas, monospace; white-space:
   figure, table {{ margin: .8rem 0; }}
   .tall svg {{ max-height: 118mm; }}
   .tall img {{ max-height: 150mm; max-width: 100%; width: auto; }}
-  table, li, .key {{ break-inside: avoid; }}
+  table, tr, li, .key {{ break-inside: avoid; }}
+  .long {{ break-inside: auto; }}
   .key {{ break-after: avoid; }}
   p, li, pre {{ orphans: 3; widows: 3; }}
 }}
@@ -152,7 +154,7 @@ def bullets(texts):
 
 def verbatim(text):
     """A text as it stands, line by line."""
-    return f"<pre>{escape(text)}</pre>"
+    return f"<pre>\n{escape(text)}</pre>"  # a browser drops the first line break
 
 
 def table(caption, heads, rows, numbers=()):
@@ -179,10 +181,11 @@ def table(caption, heads, rows, numbers=()):
         "".join(cell(column, text, "" if column else "row") for column, text in enumerate(row))
         for row in rows
     )
-    body = "".join(f"<tr>{line}</tr>\n" for line in lines)
+    body = [f"<tr>{line}</tr>\n" for line in lines]
+    kind = ' class="long"' if len(body) > LONG else ""
     return (
-        f"<table>\n<caption>{escape(caption)}</caption>\n<thead><tr>{head}</tr></thead>\n"
-        f"<tbody>\n{body}</tbody>\n</table>"
+        f"<table{kind}>\n<caption>{escape(caption)}</caption>\n<thead><tr>{head}</tr></thead>\n"
+        f"<tbody>\n{''.join(body)}</tbody>\n</table>"
     )
 
 

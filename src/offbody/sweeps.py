@@ -20,6 +20,9 @@ from offbody.parallel import threads
 from offbody.surveys import Survey
 
 COLUMNS = ("speed_ratio", "direction_error", "trust")
+KNOWN = {name for name, *_ in Survey.columns} - {
+    "sensor", "direction", "bearing", "speed_ratio_gradient_x", "speed_ratio_gradient_y"
+} | {"speed_ratio_gradient", "direction_error_gradient"}
 
 
 @dataclass(frozen=True, eq=False)
@@ -148,6 +151,22 @@ class _Job:
     columns: tuple
     caller: int  # the process that asked
 
+    @property
+    def stamp(self):
+        """What must be the same for a result to be the same; None of what JSON cannot hold."""
+        bodies = (self.entries or {}).get("body", ())
+        paths = [
+            body["file"] for body in (bodies if isinstance(bodies, list) else ())
+            if isinstance(body, Mapping) and isinstance(body.get("file"), str)
+        ]
+        files = {path: _digest(Path(self.file).parent / path) for path in paths}
+        stamp = {"offbody": __version__, "case": self.entries, "files": files,
+                 "columns": self.columns}
+        try:
+            return json.loads(json.dumps(stamp, default=_as_json))
+        except (TypeError, ValueError):
+            return None
+
 
 def _run(jobs, executor):
     """Yield (place, result) of every job as it is done."""
@@ -211,7 +230,7 @@ def _jobs(cases, columns):
     for place, (name, case) in enumerate(named):
         if isinstance(case, Mapping):
             name = f"case {place + 1}" if name is None else name
-            file, entries = f"{name}", dict(case)
+            file, entries = name, dict(case)
         elif isinstance(case, str | os.PathLike):
             name = Path(case).stem if name is None else name
             # A file that cannot be read is that case's own failure, where its turn comes.
@@ -222,8 +241,8 @@ def _jobs(cases, columns):
                 pass
         else:
             raise InputError(f"cases[{place}] must be a path or a dict, got {case!r}")
-        if not isinstance(name, str) or not name.strip():
-            raise InputError(f"cases: a name must be a text that is not blank, got {name!r}")
+        if not isinstance(name, str) or not name.strip() or "/" in name:
+            raise InputError(f"cases: a name must be a text, not blank and without /, got {name!r}")
         if name in jobs:
             raise InputError(f"cases: two are named {name!r}; give a mapping with a name for each")
         jobs[name] = _Job(name, file, entries, columns, os.getpid())
@@ -231,12 +250,10 @@ def _jobs(cases, columns):
 
 
 def _as_columns(columns):
-    known = [name for name, *_ in Survey.columns if name not in ("sensor", "direction", "bearing")]
-    known += ["speed_ratio_gradient", "direction_error_gradient"]
     columns = (columns,) if isinstance(columns, str) else tuple(columns)
     for name in columns:
-        if name not in known or name.endswith(("_x", "_y")):
-            raise InputError(f"columns: {name!r} is unknown; {nearest_name(name, known)}")
+        if name not in KNOWN:
+            raise InputError(f"columns: {name!r} is unknown; {nearest_name(name, KNOWN)}")
     return columns
 
 
@@ -248,14 +265,12 @@ class _Store:
         try:
             self.folder.mkdir(parents=True, exist_ok=True)
         except OSError as error:
-            raise InputError(
-                f"folder = {str(folder)!r} cannot be made: {error.strerror}"
-            ) from None
+            raise InputError(f"folder = {str(folder)!r} cannot be made: {error.strerror}") from None
 
     def find(self, job):
         """The result of the same case, or None."""
         path = self._path(job)
-        if not path.exists():
+        if not path.exists() or job.stamp is None:
             return None
         try:
             document = json.loads(path.read_text(encoding="utf-8"))
@@ -264,11 +279,9 @@ class _Store:
             raise InputError(
                 f"folder: {path.name!r} is no result of a sweep; move it, or give another folder"
             ) from None
-        if stamp != self._stamp(job):
+        if stamp != job.stamp:
             return None
-        columns = {
-            name: _restored(values) for name, values in document["columns"].items()
-        }
+        columns = {name: _restored(values) for name, values in document["columns"].items()}
         return Swept(
             job.name, None, tuple(document["sensors"]), np.array(document["angles"], float),
             columns, tuple(document["notes"]),
@@ -277,7 +290,7 @@ class _Store:
     def keep(self, job, result):
         """Write a result, whole or not at all."""
         document = {
-            "stamp": self._stamp(job),
+            "stamp": job.stamp,
             "sensors": result.sensors,
             "angles": result.angles.tolist(),
             "columns": {name: _plain(values) for name, values in result.columns.items()},
@@ -294,17 +307,9 @@ class _Store:
     def _path(self, job):
         return self.folder / f"{quote(job.name, safe=' ,()=+@')}.json"
 
-    @staticmethod
-    def _stamp(job):
-        """What must be the same for a result to be the same; as JSON gives it back."""
-        files = {
-            body["file"]: _digest(Path(job.file).parent / body["file"])
-            for body in (job.entries or {}).get("body", ()) if "file" in body
-        }
-        stamp = {
-            "offbody": __version__, "case": job.entries, "files": files, "columns": job.columns,
-        }
-        return json.loads(json.dumps(stamp, default=str))
+
+def _as_json(value):
+    return value.tolist() if hasattr(value, "tolist") else str(value)
 
 
 def _digest(path):
@@ -319,7 +324,5 @@ def _plain(values):
 
 
 def _restored(values):
-    array = np.array(values)
-    if array.dtype.kind == "b" or any(isinstance(value, str) for value in array.ravel()):
-        return array.astype(object) if array.dtype.kind != "b" else array
-    return array.astype(float)
+    """The array again, its kind by what stands first."""
+    return np.array(values, {bool: bool, str: object}.get(type(values[0][0]), float))
