@@ -1,11 +1,16 @@
 """The search for mounts: what it finds, that it keeps its limits, and that it can be believed."""
 
+import csv
+import json
 import time
 
 import numpy as np
 import pytest
 
 import offbody as ob
+from offbody import charts
+from offbody.cases import read_case
+from offbody.command import main
 
 DIAMETER = 0.3
 
@@ -253,3 +258,89 @@ def test_what_cannot_be_used_is_refused_by_name(mast, arguments, word):
 def test_a_reach_that_cannot_be_is_refused(arguments):
     with pytest.raises(ob.InputError):
         ob.Reach(**arguments)
+
+
+CASE = """
+title = "Quillane Ridge, mast 3"
+length_unit = "m"
+stream = { bearings = 5 }
+
+[climate]
+bearings = [0, 90, 180, 270]
+frequencies = [1, 2, 3, 4]
+
+[[body]]
+name = "mast"
+shape = "circle"
+diameter = 0.3
+
+[[sensor]]
+name = "cup"
+kind = "disc"
+reads = "speed"
+radius = 0.09
+x = -1.0
+y = 2.0
+
+[mounts]
+"""
+
+
+@pytest.fixture
+def case(tmp_path):
+    def write(mounts):
+        path = tmp_path / "case.toml"
+        path.write_text(CASE + mounts, encoding="utf-8")
+        return path
+
+    return write
+
+
+def test_the_command_writes_the_choices_the_trade_off_and_the_page(case, tmp_path, capsys):
+    path = case('reach = { greatest = 3.0 }\ncarries = ["cup"]\ncount = 2\n')
+    assert main(["mounts", str(path), "--out", str(tmp_path / "out")]) == 0
+    pictures = set() if charts.missing_library() else {"trade-off.png"}
+    assert {entry.name for entry in (tmp_path / "out").iterdir()} == pictures | {
+        "mounts.csv", "mounts.json", "summary.txt",
+    }
+    printed = capsys.readouterr()
+    assert printed.err == "" and "booms of 1.26" in printed.out, printed
+    with open(tmp_path / "out" / "mounts.csv", newline="", encoding="utf-8") as file:
+        best, *_ = csv.DictReader(file)
+    kept = json.loads((tmp_path / "out" / "mounts.json").read_text(encoding="utf-8"))
+    length, bearing = float(best["length_m"]), np.radians(float(best["bearing_1_degrees"]))
+    place = length * np.sin(bearing), length * np.cos(bearing)
+    np.testing.assert_allclose([float(best["x_1_m"]), float(best["y_1_m"])], place, atol=1e-9)
+    assert kept["choices"][0]["length"] == length
+    assert kept["columns"].keys() == kept["choices"][0].keys()
+    assert kept["search"]["bound"] <= length == kept["search"]["refined"]
+    # A folder of its own making may be replaced.
+    assert main(["mounts", str(path), "--out", str(tmp_path / "out"), "--overwrite"]) == 0
+
+
+def test_a_case_asks_for_ports_and_areas_too(case, tmp_path):
+    for number, (mounts, word) in enumerate((
+        ("stretch = { }\nbearings = [270]\n", "arc fraction 0.5833"),
+        ("stretch = { first = 0.25, last = 0.75 }\nbearings = [270]\ncount = 2\n", "saturates"),
+        ("area = { points = [[-3, -1], [-1, -1], [-1, 1], [-3, 1]] }\n"
+         "bearings = { from = 225, to = 315, step = 5 }\n", "percent of the wind"),
+    )):
+        out = tmp_path / f"out{number}"
+        assert main(["mounts", str(case(mounts)), "--out", str(out)]) == 0
+        page = (out / "summary.txt").read_text(encoding="utf-8")
+        assert word in page or word.replace("0.5833", "0.4167") in page, page
+
+
+@pytest.mark.parametrize("mounts, word", [
+    ("count = 2\n", "reach"),
+    ("reach = { greatest = 3.0 }\nstretch = { }\n", "beside"),
+    ("reach = { greatest = 3.0, gratest = 2 }\n", "greatest"),
+    ('reach = { greatest = 3.0 }\ncarries = ["cub"]\n', "cup"),
+    ('reach = { greatest = 3.0 }\nlimit = "most"\n', "mast"),
+    ("reach = { greatest = 3.0 }\nkeep_out = [[1, 2]]\n", "keep_out"),
+    ("reach = { greatest = 3.0 }\ndirections = [0]\n", "direction"),
+])
+def test_a_case_that_cannot_be_searched_is_refused_at_its_key(case, mounts, word):
+    with pytest.raises(ob.InputError, match=word) as refused:
+        read_case(case(mounts))
+    assert "mounts" in str(refused.value), refused.value

@@ -88,6 +88,23 @@ A case is a TOML file. Every key, with [] round what may be left out:
     [speed_calibration], [model_speed]
                                  { within_percent } or { standard_percent }
 
+    [mounts]                     the search of `offbody mounts`, in one of
+    reach = { [body], greatest, [least], [bearings] = [from, to] }
+                                 booms of one length from the axis of a body: how long, and where
+                                 they may point
+    area = { points, [corner_radius] }
+                                 places within a polygon
+    stretch = { [body], [first], [last] }
+                                 a stretch of wall for ports: arc fractions, counter-clockwise
+    [carries]                    the names of sensors: what each mount is to carry, in its place;
+                                 left out: a point that reads the speed
+    [count]                      how many mounts share the winds, 1 to 3; 2: a pair of ports
+    [bearings]                   the winds to serve, as in [stream]; left out: the same
+    [limit]                      "mast" (1 percent of the speed), "boom" (0.5), or a number, 0.01
+    [direction_limit]            degrees; [spacing] between mounts, [clearance] from walls
+    [keep_out]                   polygons, each a list of points, where no sensor may stand
+    [choices]                    how many to show
+
     [record]                     the columns of the sensors' record, for `offbody correct`; see
                                  ``offbody.records`` for its keys
 
@@ -188,6 +205,7 @@ class Case:
     order: int | None
     region: Region
     tolerances: dict
+    mounts: dict | None = field(repr=False)
     text: str = field(repr=False)
 
     def directions(self, angles):
@@ -229,6 +247,17 @@ class Case:
             kind = "bearings" if self.by_bearing else "directions"
             angles = {kind: self.angles}
             return ob.survey(model, self.sensors, booms=self.boom_sections, **angles)
+
+    def best_mounts(self, model):
+        """What the search of the case's [mounts] finds."""
+        if self.mounts is None:
+            raise InputError(f"{self.file}: mounts: missing; say in a [mounts] table where to seek")
+        kind = "bearings" if self.by_bearing else "directions"
+        asked = {kind: self.angles} | self.mounts
+        if self.climate is not None:
+            asked["weights"] = dict(zip(*(each.tolist() for each in self.climate), strict=True))
+        with _located(f"{self.file}: mounts", self.in_its_names):
+            return ob.best_mounts(model, **asked)
 
     @property
     def unstated_tolerances(self):
@@ -334,6 +363,7 @@ def read_case(path, entries=None):
     panels, order = _panels(top.table("panels", optional=True), len(bodies))
     region = _region(top.table("field", optional=True))
     tolerances = _tolerances(top.table("uncertainty", optional=True), booms)
+    wanted = _mounts(top.table("mounts"), bodies, sensors) if top.has("mounts") else None
     if top.has("record"):
         with _located(reading.file):
             read_settings(top.entries["record"], reading.by_bearing)
@@ -359,6 +389,7 @@ def read_case(path, entries=None):
         order=order,
         region=region,
         tolerances=tolerances,
+        mounts=wanted,
         text=text,
     )
 
@@ -1145,3 +1176,91 @@ _TOLERANCES = {
     "model_direction": _DEGREES,
 }
 _OF_BOOMS = {"boom_length", "boom_angle"}
+
+
+def _mounts(section, bodies, sensors):
+    """The arguments of ``ob.best_mounts``."""
+    asked = {"where": _where(section, bodies)}
+    if section.has("carries"):
+        asked["sensors"] = _carried(section, sensors)
+    for key, least in (("count", 1), ("choices", 1)):
+        if section.has(key):
+            asked[key] = as_count(section.place(key), section.entries[key], least=least)
+    if key := section.angle_key("{}s", "the winds", optional=True):
+        asked[key] = section.admitted(key, _angles(section, key))
+    if section.has("limit"):
+        word = isinstance(section.entries["limit"], str)
+        asked["limit"] = section.choice("limit", ("mast", "boom")) if word else (
+            section.number("limit", positive=True))
+    for key in ("direction_limit", "spacing", "clearance"):
+        if section.has(key):
+            asked[key] = section.number(key, least=0.0)
+    if section.has("keep_out"):
+        asked["keep_out"] = _keep_out(section)
+    section.close()
+    return asked
+
+
+def _where(section, bodies):
+    """The region of a search: a reach, an area or a stretch."""
+    kinds = {"reach": _reach, "area": _area, "stretch": _stretch}
+    given = [kind for kind in kinds if section.has(kind)]
+    if not given:
+        raise section.missing("where to seek", *kinds)
+    if len(given) > 1:
+        raise section.error(given[1], f"given beside {given[0]!r}; give the one or the other")
+    region = section.table(given[0])
+    found = kinds[given[0]](region, bodies)
+    region.close()
+    return found
+
+
+def _reach(section, bodies):
+    body = bodies[_index_of_body(section, bodies)]
+    greatest, least = section.number("greatest", positive=True), section.number("least", 0.0)
+    sector = None
+    if key := section.angle_key("{}s", "[from, to]", optional=True):
+        sector = as_reals(section.place(key), section.numbers(key, "[from, to]"))
+    with section.located():
+        return ob.Reach(greatest, (body.axis.real, body.axis.imag), sector, least)
+
+
+def _area(section, bodies):
+    return _polygon_of(section, section.points("points"), section.number("corner_radius", None))
+
+
+def _stretch(section, bodies):
+    body = _index_of_body(section, bodies)
+    with section.located():
+        return ob.Stretch(body, section.number("first", 0.0), section.number("last", 1.0))
+
+
+def _carried(section, sensors):
+    """The sensors named, moved so that each stands in the mount's place."""
+    names, known = section.entries["carries"], {sensor.name: sensor for sensor in sensors}
+    if not isinstance(names, list) or not names:
+        raise section.error("carries", f"expected a list of sensors' names, got {names!r}")
+    for name in names:
+        if name not in known:
+            raise section.error("carries", f"{name!r} is no sensor; {nearest_name(name, known)}")
+        if known[name].kind == "port":
+            raise section.error("carries", f"{name!r} is a port, which no mount carries")
+    return [known[name].moved(*(-np.asarray(known[name].centre))) for name in names]
+
+
+def _keep_out(section):
+    rings = section.numbers("keep_out", "polygons [[[x, y], ...], ...]")
+    if not isinstance(rings, list):
+        raise section.error("keep_out", "expected polygons [[[x, y], ...], ...]")
+    return [
+        _polygon_of(section, as_points(f"{section.place('keep_out')}[{number}]", ring))
+        for number, ring in enumerate(rings, start=1)
+    ]
+
+
+def _polygon_of(section, points, corner_radius=None):
+    """A polygon whose corners are rounded by next to nothing, unless it is said by how much."""
+    with section.located():
+        if corner_radius is None:
+            corner_radius = 1e-4 * float(np.ptp(points, axis=0).max())
+        return ob.polygon(points, corner_radius)

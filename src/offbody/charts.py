@@ -369,3 +369,52 @@ def _blocks(angles, step):
     for block in np.split(angles, np.flatnonzero(np.diff(angles) > 1.5 * step) + 1):
         if block.size:
             yield block[0], block[-1]
+
+
+# --- the trade-off of a search for mounts ---------------------------------------------------------
+
+
+def draw_trade_off(path, case, found):
+    """Draw the worst error of booms against their length, and the share of the wind they serve.
+
+    Parameters
+    ----------
+    path : path-like
+        The picture to write.
+    case : Case
+    found : Mounts
+        Of a search for booms.
+    """
+    from matplotlib.ticker import LogLocator, NullFormatter
+
+    figure = _figure(7.5, 4.6)
+    axes = figure.add_subplot()
+    length, worst = found.curve["length"], 100.0 * found.curve["worst_error"]
+    some = np.isfinite(worst)
+    lines = []
+    if some.any():
+        lines += axes.plot(length[some], worst[some], color=SPEED, label="worst error")
+        axes.set_yscale("log")
+        axes.yaxis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0)))
+        axes.yaxis.set_major_formatter(lambda percent, _: f"{percent:g}")
+        axes.yaxis.set_minor_formatter(NullFormatter())
+        axes.set_ylabel("worst error (percent of the speed)", color=SPEED)
+        lines.append(axes.axhline(
+            100.0 * found.limit, color=INK, linewidth=0.9, linestyle=":", label="limit"
+        ))
+    else:
+        axes.set_yticks([])
+    share = axes.twinx()
+    lines += share.plot(
+        length, 100.0 * found.curve["share"], "--", color=DIRECTION,
+        label="wind within the limit and trusted",
+    )
+    share.set_ylim(0.0, 103.0)
+    share.set_ylabel("share of the wind (percent)", color=DIRECTION)
+    lines.append(axes.axvline(
+        found.best.length, color=INK, linewidth=0.9, linestyle="-.", label="best choice"
+    ))
+    axes.set_xlabel(f"length of the boom{'s' * (len(found.best.angles) > 1)} ({case.length_unit})")
+    axes.set_title(_wrapped(case.title, 70), fontsize=11, parse_math=False)
+    figure.legend(handles=lines, loc="outside lower center", ncols=2, fontsize=9)
+    figure.savefig(path)

@@ -12,7 +12,7 @@ import numpy as np
 from tqdm import tqdm
 
 import offbody as ob
-from offbody import charts, records, reports
+from offbody import charts, mount_reports, records, reports
 from offbody.cases import read_case
 from offbody.errors import AccuracyWarning, InputError
 from offbody.survey_pages import survey_page
@@ -79,6 +79,7 @@ def _parser():
     verbs = parser.add_subparsers(title="verbs", metavar="VERB", required=True)
     _add_verb(verbs, "survey", _survey, "what every sensor of a case reads in every wind")
     _add_verb(verbs, "field", _field, "the velocity on a dense grid round the bodies of a case")
+    _add_verb(verbs, "mounts", _mounts, "the best places for sensors, as a case asks for them")
     demo = _add_verb(verbs, "demo", _demo, "the survey of a built-in case, which it writes out too")
     demo.add_argument(
         "name", metavar="NAME", nargs="?", choices=tuple(reports.BUILT_IN_CASES), default="mast",
@@ -258,6 +259,26 @@ def _field(options):
         *(f"- {caution}" for caution in cautions),
     ]
     return "\n".join(lines) + "\n" + _closing(options.out, files, no_pictures)
+
+
+def _mounts(options):
+    """Search for the mounts that a case asks for into a folder; returns what to print."""
+    case = read_case(options.case)
+    with reports.whole_folder(options.out, options.overwrite) as folder, _bar(3, "solving") as bar:
+        with _cautions() as cautions:
+            model = case.solve()
+            _advance(bar, "searching")
+            found = case.best_mounts(model)
+            page = mount_reports.summary(case, found, cautions)
+        _advance(bar, "writing")
+        (folder / "summary.txt").write_text(page, encoding="utf-8")
+        mount_reports.write_csv(folder / "mounts.csv", case, found)
+        mount_reports.write_json(folder / "mounts.json", case, found)
+        no_pictures = charts.missing_library() if found.curve else None
+        if found.curve and not no_pictures:
+            charts.draw_trade_off(folder / "trade-off.png", case, found)
+        files = sorted(entry.name for entry in folder.iterdir())
+    return f"{page}\n{_closing(options.out, files, no_pictures)}"
 
 
 def _bar(total, words):

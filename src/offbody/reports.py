@@ -29,7 +29,8 @@ BOOM_LIMIT = 0.005  # the same standard: by the boom below 0.5 percent
 
 # What a folder may hold and still be replaced: no file that somebody else put there.
 OWN_FILES = re.compile(
-    r"summary\.txt|report\.html|survey\.(csv|json)|field\.npz|(map|field|sensors)(-[-.\w]+)?\.png"
+    r"summary\.txt|report\.html|(survey|mounts)\.(csv|json)|field\.npz|trade-off\.png"
+    r"|(map|field|sensors)(-[-.\w]+)?\.png"
 )
 BUILT_IN_CASES = {
     name: resources.files("offbody") / file

@@ -261,11 +261,14 @@ class Survey:
 
     @_column
     def speed_ratio(self):
-        return self._speed_of(self._velocity, self._velocity)
+        return self._speed_of(self._velocity, self._velocity, self._speed_axes)
 
     @_column
     def body_speed_ratio(self):
-        return self._speed_of(self._free_of_booms, self._free_of_booms)
+        if not any(self.booms):
+            return self.speed_ratio
+        bare = self._free_of_booms
+        return self._speed_of(bare, bare, self._axes_of(bare))
 
     @_column
     def boom_speed_ratio(self):
@@ -297,13 +300,17 @@ class Survey:
 
     @_column
     def saturated(self):
+        if np.isinf(self._samples.yaw_ranges).all():
+            return np.zeros((len(self.angles), len(self.sensors)), bool)
         yaw = -self.yaw if self.by_bearing else self.yaw
         least, greatest = self._samples.yaw_ranges.T
         return (yaw < least) | (yaw > greatest)
 
     @_column
     def speed_ratio_gradient(self):
-        changes = [self._speed_of(self._velocity, change) for change in self._changes]
+        changes = [
+            self._speed_of(change, self._velocity, self._speed_axes) for change in self._changes
+        ]
         return np.stack(changes, axis=-1)
 
     @_column
@@ -497,11 +504,12 @@ class Survey:
         # A stream turned back is 180 degrees off, whichever way the rounding went.
         return np.where(degrees == -180, 180.0, degrees)
 
-    def _speed_of(self, velocity, change):
-        """Ratio to the undisturbed speed, (n, k), of velocities at the samples, or their change.
+    @cached_property
+    def _speed_axes(self):
+        return self._axes_of(self._velocity)
 
-        Vectors sensed, and their changes, count along the vector sensed; NaN where no speed is.
-        """
+    def _axes_of(self, velocity):
+        """Along which vectors sensed, and their changes, are measured as speeds, (n, k)."""
         samples = self._samples
         axes = _unit(samples.read(velocity))
         paths = samples.are("path")
@@ -511,6 +519,14 @@ class Survey:
             cosine[np.abs(cosine) < SQUARE_TO_PATH] = np.nan
             # Its reading is compared with the undisturbed component, not with the whole speed.
             axes[:, paths] = along * (1 / cosine)
+        return axes
+
+    def _speed_of(self, change, velocity, axes):
+        """Ratio to the undisturbed speed, (n, k), of the velocity at the samples or its change.
+
+        NaN in the columns of sensors that read no speed.
+        """
+        samples = self._samples
         speed = (samples.read(change) * axes.conj()).real
         averaging = [s.kind != "port" and s.averages_speed for s in self.sensors]
         if any(averaging):
