@@ -29,15 +29,21 @@ class BuildKernels(build_ext):
             )
 
 
+def kernel(name, *headers):
+    """One extension module, from kernels/ and the headers that it includes."""
+    return Extension(
+        f"offbody.{name}",
+        [f"kernels/{name}.pyx"],
+        include_dirs=["kernels"],
+        depends=[f"kernels/{header}" for header in headers],
+        extra_compile_args=[] if WINDOWS else ["-O3", "-fno-math-errno", "-fno-trapping-math"],
+    )
+
+
 setup(
     ext_modules=[
-        Extension(
-            "offbody._kernels",
-            ["kernels/_kernels.pyx"],
-            include_dirs=["kernels"],
-            depends=["kernels/closed_form.h"],
-            extra_compile_args=[] if WINDOWS else ["-O3", "-fno-math-errno", "-fno-trapping-math"],
-        )
+        kernel("_kernels", "closed_form.h"),
+        kernel("_multipole", "closed_form.h", "multipole.h"),
     ],
     cmdclass={"build_ext": BuildKernels},
 )

@@ -8,6 +8,7 @@ WAVES = 6            # of the radius round a body, about 1
 LEAST_RADIUS = 0.3
 GAPS = 0.03, 1.0     # between two bodies
 SAMPLES = np.arange(600) / 600
+DIRECTIONS = np.arange(0.0, 180.0, 20.0)
 
 
 def random_bodies(seed):
@@ -29,6 +30,19 @@ def random_bodies(seed):
         near, far = (near, middle) if apart > gap and outside else (middle, far)
     shift = far * aside
     return [_outline(first), _outline(second, size, shift)]
+
+
+def judged(bodies, model):
+    """Return a model's greatest error of surface speed by far finer panels, and these' own."""
+    judge = ob.solve(bodies, panels=[2 * count for count in model.panel_counts])
+    if judge.estimated_error > 0.01 * model.estimated_error:
+        judge = ob.solve(bodies, panels=[2 * count for count in judge.panel_counts])
+    wrong = 0.0
+    for body in range(len(bodies)):
+        wall = judge.surface(body, DIRECTIONS)
+        speed = np.hypot(*np.moveaxis(model.velocity(wall.points, DIRECTIONS), -1, 0))
+        wrong = max(wrong, np.abs(speed - np.abs(wall.speed)).max())
+    return wrong, judge.estimated_error
 
 
 def _radii(generator):

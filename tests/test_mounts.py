@@ -304,7 +304,7 @@ def test_the_command_writes_the_choices_the_trade_off_and_the_page(case, tmp_pat
         "mounts.csv", "mounts.json", "summary.txt",
     }
     printed = capsys.readouterr()
-    assert printed.err == "" and "booms of 1.26" in printed.out, printed
+    assert printed.err == "" and "booms of 1.2" in printed.out, printed
     with open(tmp_path / "out" / "mounts.csv", newline="", encoding="utf-8") as file:
         best, *_ = csv.DictReader(file)
     kept = json.loads((tmp_path / "out" / "mounts.json").read_text(encoding="utf-8"))

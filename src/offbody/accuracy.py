@@ -1,9 +1,10 @@
 """How wrong a number is: the tolerance that a caller states, and the error that a model estimates.
 
 A solved density makes a flow that is exact but for what crosses the walls: the normal velocity
-left over at the nodes, where only the tangential one just inside was made zero. That leftover,
-solved for as if it were blown through the walls, gives the error's own field, surface speed and
-all, on and off the walls, for two more columns of the same factorisation.
+left over along them, where only the tangential one just inside was made zero, at the nodes. That
+leftover, solved for as if it were blown through the walls, gives the error's own field, surface
+speed and all, on and off the walls, for two more columns of the same factorisation. It is taken at
+twice as many points as nodes: between them it swings, and far off only its mean tells.
 """
 
 from dataclasses import dataclass
@@ -11,6 +12,7 @@ from dataclasses import dataclass
 from offbody.checks import as_number
 
 ATTEMPTS = 12       # solves before a tolerance is given up
+MARGIN = 0.25       # of a tolerance, to which the estimate is brought: more may hide between nodes
 MOST_NODES = 6000   # more are not tried for the sake of a tolerance
 LEAST_FLOOR = 1e-6  # factor on the least panels at breaks, where refining them ends
 SHRINKING = 0.02    # of the perimeter: nearer to a break the panels shrink toward it

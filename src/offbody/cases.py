@@ -1249,13 +1249,14 @@ def _carried(section, sensors):
 
 
 def _keep_out(section):
-    rings = section.numbers("keep_out", "polygons [[[x, y], ...], ...]")
-    if not isinstance(rings, list):
-        raise section.error("keep_out", "expected polygons [[[x, y], ...], ...]")
-    return [
-        _polygon_of(section, as_points(f"{section.place('keep_out')}[{number}]", ring))
-        for number, ring in enumerate(rings, start=1)
-    ]
+    expected = "polygons [[[x, y], ...], ...]"
+    rings = section.numbers("keep_out", expected)
+    if not isinstance(rings, list) or not all(isinstance(ring, list) for ring in rings):
+        raise section.error("keep_out", f"expected {expected}")
+    polygons = [as_points(section.place("keep_out"), ring) for ring in rings]
+    if any(points.ndim != 2 for points in polygons):
+        raise section.error("keep_out", f"expected {expected}")
+    return [_polygon_of(section, points) for points in polygons]
 
 
 def _polygon_of(section, points, corner_radius=None):

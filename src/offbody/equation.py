@@ -58,6 +58,13 @@ class Equation:
         scaled = right * self._root[:, None]
         return lu_solve(self._factors, scaled, check_finite=False).T / self._root
 
+    def without_flux(self, blown):
+        """Normal velocities (R, N) less their mean over each wall."""
+        blown = blown.T.copy()
+        for part, length in zip(self._bodies, self._lengths, strict=True):
+            blown[part] -= self._mean(blown, part, length)
+        return blown.T
+
     def response(self, blown):
         """g = gamma + i v (R, N) of normal velocities v (R, N) on the walls, no circulation."""
         along = self.wall_velocity(1j * blown).real
@@ -70,6 +77,9 @@ class Equation:
 
     def wall_velocity(self, strengths):
         """(R, N) tangential + i normal velocity just outside the nodes that strengths induce."""
-        panels = self.panels
+        return self.panels.tangents * self.velocity(strengths, self.panels.nodes)
+
+    def velocity(self, strengths, z):
+        """(R, len(z)) complex velocity that strengths (R, N) induce at z."""
         evaluate = flow.velocity if len(strengths) < BY_MATRIX else flow.velocity_by_matrix
-        return panels.tangents * evaluate(panels, self.surroundings, strengths, panels.nodes)
+        return evaluate(self.panels, self.surroundings, strengths, z)

@@ -133,6 +133,33 @@ def to_ends(order):
     return legendre.legvander(np.array([-1.0, 1.0]), order - 1) @ to_modes(order)
 
 
+@cache
+def from_finer(order):
+    """(order, 2 order): values at twice as many Gauss points of a panel to those at its own.
+
+    Of the polynomial that is nearest to them in the mean square: what it does far off is theirs.
+    """
+    x, shares = gauss(2 * order)
+    modes = legendre.legvander(x, order - 1).T * shares * (np.arange(order)[:, None] + 0.5)
+    return legendre.legvander(gauss(order)[0], order - 1) @ modes
+
+
+def finer_places(walls, panels):
+    """Complex points and unit tangents at twice as many Gauss points of each panel as nodes."""
+    x = gauss(2 * panels.order)[0]
+    if panels.order == 1:
+        a, b = panels.ends.T[..., None]
+        return (0.5 * (a + b) + 0.5 * (b - a) * x).ravel(), np.repeat(panels.tangents, 2)
+    points, tangents = [], []
+    for body, wall in enumerate(walls):
+        low, high = panels.end_arcs[panels.panel_slice(body)].T[..., None]
+        parameter = wall.parameter((0.5 * (low + high) + 0.5 * (high - low) * x).ravel())
+        points.append(wall.outline.position(parameter))
+        along = wall.outline.derivative(parameter)
+        tangents.append(along / np.abs(along))
+    return np.concatenate(points), np.concatenate(tangents)
+
+
 def _keep_apart_at_edges(at_ends, walls, starts, tangents):
     """Give the two panels that meet at a sharp edge each its own tangent there."""
     extrapolate = to_ends(tangents.shape[1])

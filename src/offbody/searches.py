@@ -185,12 +185,6 @@ class _RegionSearch:
     def _notes(self, best, search):
         """What it came to, and what the survey of the best choice has to say."""
         site = self.site
-        if not search.gap <= WIDE_GAP:
-            yield (
-                f"Between the places of the scan there is room for a {search.quantity} of "
-                f"{search.bound:.3g}, against {search.refined:.3g} found: search a smaller region, "
-                "where the scan is denser, to exclude it."
-            )
         percent = f"{100 * site.limit:g} percent"
         if best.key[0] == 1:
             yield (
@@ -201,6 +195,12 @@ class _RegionSearch:
             yield (
                 f"No choice has a trusted sensor in every wind: these keep the greatest share of "
                 f"the wind within {percent}."
+            )
+        if not search.gap <= WIDE_GAP:
+            yield (
+                f"Between the places of the scan there is room for a {search.quantity} of "
+                f"{search.bound:.3g}, against {search.refined:.3g} found: search a smaller region, "
+                "where the scan is denser, to exclude it."
             )
         asked = site.asked
         table = survey(asked.model, site.sensors(best.z), asked.directions, reynolds=asked.reynolds)
@@ -373,11 +373,11 @@ class BoomSearch(_RegionSearch):
         best = self._best(found, self._lengths_of(first, found))
         bound = self._bound(best[0], first, hoped)
         scans = [(first, found)]
-        if best[0] == 0 and bound < best[1]:
-            lengths = np.linspace(max(bound, 1e-6 * self.size), best[1], FINE_RINGS)
+        lengths = self._lengths_between(best, bound, first, hoped)
+        if lengths is not None:
             fine = self._scan(lengths)
             again, hoped = self._scanned(fine)
-            bound = max(bound, self._bound(0, fine, hoped))
+            bound = max(bound, self._bound(best[0], fine, hoped))
             scans.insert(0, (fine, again))
         # Where it is shortest the second scan knows more; what else there is, only the first.
         wanted, taken, starts = self.site.asked.choices, [], []
@@ -391,6 +391,17 @@ class BoomSearch(_RegionSearch):
         return self._result(
             starts, steps, scans, best, bound, (step, float(np.degrees(self.turn))), curve
         )
+
+    def _lengths_between(self, best, bound, scan, hoped):
+        """Lengths of the second scan: those at which the first one leaves room for a better set."""
+        if best[0] == 2 or not bound < best[1]:
+            return None
+        if best[0] == 0:
+            return np.linspace(max(bound, 1e-6 * self.size), best[1], FINE_RINGS)
+        radii = self._radii(scan)
+        rows = hoped.sets[hoped.worst <= best[1], 0] // scan.shape[1]
+        low, high = max(rows.min() - 1, 0), min(rows.max() + 1, len(radii) - 1)
+        return np.linspace(radii[low], radii[high], FINE_RINGS)
 
     def _first_lengths(self):
         """Lengths of the first scan, from the shortest that may stand somewhere to the greatest."""
