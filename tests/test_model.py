@@ -926,3 +926,15 @@ def test_points_in_question_of_inside_are_checked_too():
         ob.inside("circle", (0.0, 0.0))
     assert ob.inside(CIRCLE, (0.1, 0.1)) is True
     assert ob.inside(CIRCLE, np.zeros((2, 3, 2))).shape == (2, 3)
+
+
+def test_the_force_where_a_prescribed_circulation_leaves_an_edge_unbounded_is_nan_with_a_warning():
+    model = ob.solve([ob.four_digit("2412"), ob.circle(0.2, (2.0, 0.5))], circulation=[0.8, None])
+    with pytest.warns(ob.AccuracyWarning, match="force on body 0 .*circulation = 0.8"):
+        force = model.force(37.0)
+    assert np.isnan(force[0]).all() and np.isfinite(force[1]).all(), force
+
+
+def test_a_section_on_map_coordinates_is_solved_with_a_warning_that_says_where_to_put_it():
+    with pytest.warns(ob.AccuracyWarning, match="NACA 2412 section.*nearer to"):
+        ob.solve(ob.four_digit("2412").moved(433512.0, 5921231.0))

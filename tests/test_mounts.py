@@ -61,7 +61,22 @@ def test_the_bound_lies_beyond_what_a_search_ten_times_as_dense_finds(mast):
     # The limit itself is met at the length found: 1e-4 of it is the denser scan's own room.
     assert errors.min() > 0.01 * (1 - 1e-4), f"{errors.min():.6f} with a shorter boom"
     np.testing.assert_array_less(found.search.bound, found.best.length)
-    np.testing.assert_array_less(found.search.gap, 0.05)  # of the length: the second scan's step
+    # Cells are split until nothing better by a hundredth is left.
+    np.testing.assert_array_less(found.search.gap, 0.0101)
+
+
+def test_the_splitting_of_cells_finds_what_the_scan_stepped_over():
+    centres = 0.35 * np.exp(1j * np.radians([90, 210, 330]))
+    legs = [ob.circle(0.06, (z.real, z.imag)) for z in centres]
+    tower = ob.solve(legs, wakes=ob.Wake(1.2))
+    winds = np.arange(0.0, 91.0, 6.0)
+    found = ob.best_mounts(tower, ob.Reach(5.0), directions=winds)
+    np.testing.assert_array_less(found.search.gap, 0.0101)
+    random = np.random.default_rng(7)
+    z = found.search.bound * np.sqrt(random.random(4000)) * np.exp(2j * np.pi * random.random(4000))
+    table = ob.survey(tower, [ob.PointSensor(p.real, p.imag) for p in z], winds)
+    errors = np.where(table.trust, np.abs(table.speed_ratio - 1), np.inf).max(axis=0)
+    assert errors.min() > 0.01, f"{errors.min():.6f} with a boom shorter than the bound"
 
 
 def test_the_longer_the_boom_the_less_the_worst_error_of_a_trade_off(mast):

@@ -16,7 +16,7 @@ MARGIN = 0.25       # of a tolerance, to which the estimate is brought: more may
 MOST_NODES = 6000   # more are not tried for the sake of a tolerance
 LEAST_FLOOR = 1e-6  # factor on the least panels at breaks, where refining them ends
 SHRINKING = 0.02    # of the perimeter: nearer to a break the panels shrink toward it
-NEAR_EDGE = 1e-6    # of the perimeter: nearer to a sharp edge no tolerance of the speed is promised
+NEAR_EDGE = 1e-6    # of the perimeter: nearer to an edge or kink no tolerance of speed is promised
 
 
 @dataclass(frozen=True)
@@ -24,7 +24,8 @@ class Tolerance:
     """The error of surface speed, over the onset speed, that a model is to stay below.
 
     Given as ``panels`` to ``ob.solve``, it lets panels be split until the estimated error, for any
-    direction, is below it everywhere but within a millionth of the perimeter of a sharp edge.
+    direction, is below it everywhere but within a millionth of the perimeter of a sharp edge, or of
+    a kink such as that of a cambered four-digit section where its camber is greatest.
 
     Parameters
     ----------

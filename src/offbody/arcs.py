@@ -10,6 +10,8 @@ import numpy as np
 GAUSS_POINTS, GAUSS_WEIGHTS = np.polynomial.legendre.leggauss(16)
 EDGE_HALVINGS = 30
 LENGTH_TOLERANCE = 1e-13  # of the whole, per stretch; rounding stops it near 1e-15
+KINK = 1e-6               # radians: a wall that turns less at a break is smooth there
+BESIDE = 1e-12            # of the parameter, from a break to its two sides
 
 
 def _differentiation(x):
@@ -51,6 +53,8 @@ class Arcs:
         Arc positions where panels must end; at least one (a smooth outline has its start).
     edge : float or None
         Arc position of the sharp edge.
+    kinks : array
+        Those of the breaks where the wall turns, be it by little: the edge among them.
     start : float
         Arc position of the outline's first point, from which arc fractions count.
     """
@@ -65,6 +69,8 @@ class Arcs:
         self._ends = self._stretches(np.append(self._corners, origin + 1.0))
         self._measure()
         self.edge = None if outline.edge is None else 0.0
+        before, after = (outline.derivative(self._corners + side) for side in (-BESIDE, BESIDE))
+        self.kinks = self.breaks[np.abs(np.angle(after / before)) > KINK]
         self.start = float(self.at_parameter(np.array([outline.start]))[0]) % self.length
 
     @property
@@ -117,6 +123,7 @@ class Arcs:
         self.breaks = self.ends[np.searchsorted(self._ends, self._corners)]
         self.sample_arcs = (self.ends[:-1, None] + (speed * half) @ INTEGRATE.T).ravel()
         self.sample_points = self.outline.position(parameter % 1.0).ravel()
+        self.sample_tangents = (derivative / speed).ravel()
         self.sample_curvature = (turning.imag / (speed * half)).ravel()
         self.sample_stretch = np.repeat(self.lengths, len(GAUSS_POINTS))
 

@@ -118,9 +118,9 @@ class Search:
     scan_best, refined : float
         The quantity of the scan's best and after refinement.
     bound : float
-        What no finer search could pass, by the slopes at the scan's places: an error changes by no
+        What no finer search could pass, by the slopes at the places read: an error changes by no
         more, from a place to half a step off, than the greatest slope there and at its neighbours
-        says.
+        says. Within 1 percent of ``refined`` where all cells could be split until nothing was left.
     """
 
     quantity: str

@@ -5,11 +5,13 @@ jump of curvature and the nearest other wall ask for, made to change slowly, so 
 differ by less than a factor of about e. Panels share the integral of 1/length equally.
 """
 
+import warnings
+
 import numpy as np
 from scipy.spatial import cKDTree
 
 from offbody.arcs import Arcs
-from offbody.errors import InputError
+from offbody.errors import AccuracyWarning, InputError
 from offbody.surroundings import copies_of
 
 GROWTH = 1.0              # greatest slope of the length field: neighbours within a factor of e
@@ -20,6 +22,8 @@ JOIN_FLOOR = 1.0 / 8.0    # least panel at a jump of curvature, of what curvatur
 PER_GAP = 1.0             # panel length over the scale on which a gap changes along the wall
 LEAST = 1e-9              # no floor is less, of the perimeter: rounding would tell in the nodes
 ROUNDING = 1e-11          # nor is one less than this share of the distance from the origin
+FAR_PLACED = 10.0         # times EDGE_FLOOR: coarser than this at an edge is worth a warning
+SPACING = 1.0 / 8.0       # of the samples, at the most, over the stretch that holds them
 TOUCH = 1e-9              # bodies closer than this fraction of the smaller one touch
 
 
@@ -49,7 +53,7 @@ def lay(walls, gaps, counts, coarseness=1.0, floor=1.0):
 def _gaps(walls, surroundings):
     """Per body, each sample's gap scale to the nearest other wall or image; overlaps are refused.
 
-    Stretches longer than their distance to it are halved until the samples see the gap as it is.
+    Stretches are halved until the samples see the gap as it is.
     """
     sizes = [np.ptp(w.sample_points.real) + np.ptp(w.sample_points.imag) for w in walls]
     for body, wall in enumerate(walls):
@@ -58,7 +62,7 @@ def _gaps(walls, surroundings):
         return [np.full(len(walls[0].sample_points), np.inf)]
     for _ in range(40):
         found = [_nearest(walls, body, surroundings, sizes) for body in range(len(walls))]
-        coarse = [d < w.sample_stretch for (d, _), w in zip(found, walls, strict=True)]
+        coarse = [_is_coarse(wall, *facing) for wall, facing in zip(walls, found, strict=True)]
         if not any(c.any() for c in coarse):
             break
         for wall, marked in zip(walls, coarse, strict=True):
@@ -72,23 +76,40 @@ def _gaps(walls, surroundings):
 
 
 def _nearest(walls, body, surroundings, sizes):
-    """Distance from each sample of a body to the nearest other wall, and both curvatures in sum."""
-    cloud, owner, bending = [], [], []
+    """Distance from each sample of a body to the nearest other wall, and both curvatures in sum.
+
+    It is the distance to the tangent at the nearest sample, where that lies abreast: parallel walls
+    need no finer samples however close they are.
+    """
+    here = walls[body].sample_points
+    places, tangents, others = [], [], []
     for k, wall in enumerate(walls):
         seen = copies_of(surroundings, wall.sample_points)
-        for points in seen if k == body else [wall.sample_points, *seen]:
-            cloud.append(points)
-            owner.append(np.full(len(points), k))
-            bending.append(np.abs(wall.sample_curvature))
-    here = walls[body].sample_points
-    cloud = np.concatenate(cloud)
+        along = -wall.sample_tangents.conj() if surroundings.walls else wall.sample_tangents
+        others += [k] * (len(seen) + (k != body))
+        places += seen if k == body else [wall.sample_points, *seen]
+        tangents += ([] if k == body else [wall.sample_tangents]) + [along] * len(seen)
+    owner = np.repeat(others, [len(points) for points in places])
+    curvature = np.concatenate([np.abs(walls[k].sample_curvature) for k in others])
+    spacing = np.concatenate([SPACING * walls[k].sample_stretch for k in others])
+    cloud, tangents = np.concatenate(places), np.concatenate(tangents)
     tree = cKDTree(np.stack([cloud.real, cloud.imag], 1))
-    distance, which = tree.query(np.stack([here.real, here.imag], 1))
-    nearest = int(np.argmin(distance))
-    other = int(np.concatenate(owner)[which[nearest]])
-    if distance[nearest] < TOUCH * min(sizes[body], sizes[other]):
-        _refuse_overlap(walls, body, other, here[nearest], surroundings)
-    return distance, np.abs(walls[body].sample_curvature) + np.concatenate(bending)[which]
+    _, which = tree.query(np.stack([here.real, here.imag], 1))
+    apart = (here - cloud[which]) / tangents[which]
+    distance = np.where(np.abs(apart.real) < spacing[which], -apart.imag, np.abs(apart))
+    curvature = np.abs(walls[body].sample_curvature) + curvature[which]
+    limits = TOUCH * np.minimum(sizes[body], np.asarray(sizes)[owner[which]])
+    met = distance < limits
+    met &= ~_is_coarse(walls[body], distance, curvature) | (np.abs(distance) < limits)
+    if met.any():
+        first = int(np.flatnonzero(met)[0])
+        _refuse_overlap(walls, body, int(owner[which[first]]), here[first], surroundings)
+    return distance, curvature
+
+
+def _is_coarse(wall, distance, curvature):
+    """Samples too far apart to see that two walls curve away from each other by their distance."""
+    return (SPACING * wall.sample_stretch) ** 2 * curvature > 0.5 * np.abs(distance)
 
 
 def _gap_scale(distance, curvature):
@@ -163,7 +184,14 @@ def _length_field(wall, gap, scale):
     around = (wall.breaks[:, None] + np.concatenate([nearby, -nearby])) % total
     grid = np.unique(np.concatenate([arcs, around.ravel(), [0.0, total]]))
     field = np.interp(grid, arcs, wanted, period=total)
-    least = max(LEAST * total, ROUNDING * np.abs(wall.sample_points).max())
+    rounding = ROUNDING * np.abs(wall.sample_points).max()
+    least = max(LEAST * total, rounding)
+    if wall.edge is not None and rounding > FAR_PLACED * EDGE_FLOOR * total:
+        warnings.warn(
+            f"{wall.outline.name} stands so far from the origin that the rounding of coordinates "
+            "limits the panels at its sharp edge; move everything nearer to (0, 0)",
+            AccuracyWarning, stacklevel=4,
+        )
     for place in wall.breaks:
         if place == wall.edge:
             floor = EDGE_FLOOR * total

@@ -410,29 +410,28 @@ class Model:
         """Greatest leftover of normal speed where panels shrink toward breaks, and elsewhere."""
         through = self._wall_errors(self._typical_directions(), np.imag).max(axis=0)
         near = self._near_breaks(SHRINKING)
-        through[self._near_breaks(NEAR_EDGE, edges_only=True)] = 0.0
+        through[self._near_breaks(NEAR_EDGE, kinks_only=True)] = 0.0
         return through[near].max(initial=0.0), through[~near].max(initial=0.0)
 
-    def _near_breaks(self, share, edges_only=False):
-        """(N,) nodes nearer to a break (or only: a sharp edge) than a share of the perimeter."""
+    def _near_breaks(self, share, kinks_only=False):
+        """(N,) nodes nearer to a break (or only: to a kink) than a share of the perimeter."""
         near = np.zeros(self.node_count, bool)
         for body, wall in enumerate(self._arcs):
             part = self._panels.node_slice(body)
-            for place in wall.breaks if wall.is_broken else ():
-                if place == wall.edge or not edges_only:
-                    away = np.abs(self._panels.arcs[part] - place)
-                    near[part] |= np.minimum(away, wall.length - away) < share * wall.length
+            for place in wall.kinks if kinks_only else wall.breaks if wall.is_broken else ():
+                away = np.abs(self._panels.arcs[part] - place)
+                near[part] |= np.minimum(away, wall.length - away) < share * wall.length
         return near
 
     @property
     def estimated_error(self):
         """Greatest estimated error of surface speed, over the onset speed, for any direction.
 
-        Within a millionth of the perimeter of a sharp edge it is not counted: the speed itself is
-        not smooth there.
+        Within a millionth of the perimeter of a sharp edge, or of a kink (as at the greatest camber
+        of a four-digit section), it is not counted: the speed itself is not smooth there.
         """
         errors = self._wall_errors(self._typical_directions()).max(axis=0)
-        errors[self._near_breaks(NEAR_EDGE, edges_only=True)] = 0.0
+        errors[self._near_breaks(NEAR_EDGE, kinks_only=True)] = 0.0
         return float(errors.max())
 
     def numerical_error(self, points, direction=0.0):
@@ -844,6 +843,13 @@ class Model:
         The integral of the pressure (Blasius). For a body with a wake that would be a thrust and
         means nothing: its component along the stream is then the wake's drag. The one across it is
         that of the pressure, the base pressure in the lee; of the potential flow if there is none.
+        NaN for a body with a sharp edge whose circulation is prescribed: the stream turns round its
+        edge at an unbounded speed, and the suction there is beyond panels.
+
+        Warns
+        -----
+        AccuracyWarning
+            Where it is NaN for that reason.
 
         Examples
         --------
@@ -868,6 +874,14 @@ class Model:
                     force[:, body] = -pressure @ (normal * shares)
                 across = (force[:, body] / stream).imag
                 force[:, body] = stream * (2.0 * lee.flux.sum(axis=1) + 1j * across)
+        for body, given in enumerate(self._prescribed):
+            if given is not None and self._has_edge(body):
+                force[:, body] = complex(np.nan, np.nan)
+                warnings.warn(
+                    f"the force on body {body} is NaN: with circulation = {given:g} prescribed the "
+                    "speed at its sharp edge is unbounded; leave its circulation None",
+                    AccuracyWarning, stacklevel=2,
+                )
         return _shaped(_pairs(force), directions)
 
     def wake(self, body, direction=0.0):
@@ -973,7 +987,7 @@ class Model:
             Follow each line upstream too; its start is then within it.
 
         A line ends at a wall, at a point of rest, at the domain's edge or at its length; one that
-        would start inside a body is empty. In the ends of a vector of directions: call in a loop.
+        would start inside a body, at a point of rest or outside the domain is empty.
 
         Raises
         ------

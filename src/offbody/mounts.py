@@ -1,11 +1,11 @@
 """Where to mount sensors: every place of a grid is looked at, and the best are refined.
 
 A search runs in three steps. The scan reads all places of a grid, all winds at once, and rates
-every set of one, two or three of them. The same table, each error lowered by what its slope could
-take off within half a step, is rated again: what even that cannot reach is excluded, so the best of
-it bounds what a finer search could find. The best few of the scan are then refined by sequential
-quadratic programming with the exact gradients of the flow. For booms the second scan is laid
-between that bound and the first scan's best.
+every set of one, two or three of them (``scans``). The best few are refined by sequential quadratic
+programming with the exact gradients of the flow (``searches``). Then the scan's cells are looked at
+again, each error lowered by what its slope could take off within half a step: what even that cannot
+reach is excluded, and the cells of the rest are split until nothing is left that would be better by
+a hundredth, or patience ends (``exclusions``). What remains bounds what any search could find.
 
 An error is the departure of the speed ratio from 1; an error of direction counts as the share of
 its own limit that it takes, times the limit of the speed.
@@ -91,6 +91,9 @@ def best_mounts(
     will do, the least worst error with all winds trusted; failing that, the greatest share of the
     wind. Areas: the same without the length. ``Mounts.notes`` says which it came to. Trust is that
     of ``ob.survey``.
+
+    Close to a wall errors pass through zero, and a short boom may end just there, where nothing
+    about the flow is certain: give a clearance.
 
     Beside the standard's own figures for a tube (IEC 61400-12-1, from memory: 6.1 diameters for 1
     percent, 8.2 for 0.5) the booms found are shorter without a wake (5.0 and 7.1), about equal with

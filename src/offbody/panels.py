@@ -12,14 +12,16 @@ from offbody.images import Copies
 def reach(order):
     """Half-chords from a panel's middle beyond which its nodes are as good as the closed form.
 
-    The error of the node sum is about rho^(-2 order), rho = t + sqrt(t^2 - 1): where that is 1e-15,
-    but not below 2, for panels that curve, nor above 10, as low orders have greater errors anyway.
-    For order 1, where the odd series takes over. bench/formulations.py prints the table behind it.
+    The error of the node sum is about rho^(-2 order), rho = t + sqrt(t^2 - 1): beyond where that is
+    1e-15, but no farther than the recursion up to order + 1 keeps eight digits, (2 t)^(order + 1),
+    nor than 30; and not below 2, for panels that curve. For order 1, where the odd series takes
+    over. bench/formulations.py prints the table behind it.
     """
     if order == 1:
         return 3.0
     rho = 10.0 ** (7.5 / order)
-    return float(np.clip(0.5 * (rho + 1.0 / rho), 2.0, 10.0))
+    lost = 0.5 * 10.0 ** (8.0 / (order + 1))
+    return float(np.clip(0.5 * (rho + 1.0 / rho), 2.0, max(2.0, min(lost, 30.0))))
 
 
 @dataclass(frozen=True, eq=False)
@@ -171,7 +173,8 @@ def _keep_apart_at_edges(at_ends, walls, starts, tangents):
 
 def _local_shapes(a, b, nodes, order):
     """Per panel: values to Legendre coefficients, and the curve's height over the chord."""
-    local = (nodes.reshape(-1, order) - 0.5 * (a + b)[:, None]) / (0.5 * (b - a))[:, None]
+    by_panel = nodes.reshape(-1, order)  # differences of near places are exact, a middle is not
+    local = ((by_panel - a[:, None]) - (b[:, None] - by_panel)) / (b - a)[:, None]
     modes = np.linalg.inv(legendre.legvander(local, order - 1))
     # A curve's height is known to about the size of its last coefficients, and to rounding.
     rounding = 1e-12 + 8e-16 * np.abs(nodes).max() / np.abs(0.5 * (b - a))

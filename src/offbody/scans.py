@@ -18,6 +18,7 @@ from offbody.surveys import survey
 DIRECTION_LIMIT = 1.0  # degrees; a rule of this project, for sensors that read no speed
 READINGS_AT_ONCE = 1_500_000  # winds times sample points
 SETS_AT_ONCE = 2_000_000  # winds times sets of places
+WALL_POINTS = 4000  # of every outline, among which the nearest is sought
 WITHIN = 1 + 1e-6  # times a limit: the refinement rests on the limit to rounding
 
 
@@ -60,7 +61,7 @@ class Site:
     @cached_property
     def _walls(self):
         model = self.asked.model
-        return cKDTree(np.concatenate([outline.points(4000) for outline in model.outlines]))
+        return cKDTree(np.concatenate([outline.points(WALL_POINTS) for outline in model.outlines]))
 
     def wall_distance(self, z):
         """(m,) distance of places from the nearest wall of a body or of the surroundings."""
@@ -70,18 +71,39 @@ class Site:
             distance = np.minimum(distance, np.abs(z.imag - wall))
         return distance
 
+    def leeway(self, z, room):
+        """(m,) how far places are from where no mount may stand; negative where none may.
+
+        That is: nearer than the room to a wall, in a body, in a keep-out area.
+        """
+        shape, z = np.shape(z), np.ravel(z)
+        distance = self.wall_distance(z)
+        inside_wall = inside(self.asked.model, pairs(z)) | ~holds(self.asked.model.surroundings, z)
+        leeway = np.where(inside_wall, -distance - room, distance - room)
+        for outline, ring in zip(self.keep_out, self._rings, strict=True):
+            distance = ring.query(pairs(z))[0]
+            leeway = np.minimum(
+                leeway, np.where(inside(outline, pairs(z)), -distance, distance)
+            )
+        return leeway.reshape(shape)
+
+    @cached_property
+    def _rings(self):
+        return [cKDTree(outline.points(WALL_POINTS)) for outline in self.keep_out]
+
     def clear(self, z, room):
-        """(m,) whether a mount may stand there: in the flow, off walls, out of keep-out areas.
+        """(m,) whether mounts, and all that they carry, may stand at places z.
 
         ``room``: at least so far from walls.
         """
         model = self.asked.model
         offsets = np.concatenate([sensor.points for sensor in self.carried]) @ [1, 1j]
-        points = z[:, None] + offsets
+        clear = self.leeway(z, room) >= 0
+        points = z[clear, None] + offsets
         blocked = inside(model, pairs(points)) | ~holds(model.surroundings, points)
         for outline in self.keep_out:
             blocked |= inside(outline, pairs(points))
-        clear = ~blocked.any(axis=1) & (self.wall_distance(z) >= room)
+        clear[clear] = ~blocked.any(axis=1)
         walls = [wall @ [1, 1j] for wall in model.walls]
         for sensor in self.carried:
             if len(sensor.points) > 1:
@@ -221,9 +243,11 @@ class Scan:
     def __init__(self, site, places, half_steps, closes, clear):
         self.site, self.shape, self.closes = site, places.shape, closes
         self.places, self.clear = places.ravel(), clear.ravel()
+        self.half_steps = half_steps.reshape(-1, 2)
         readings = site.read(self.places[self.clear], site.asked.directions, exactly=False)
         self.errors = self._spread(_greatest(readings[0], readings[2]), np.inf).T
-        self.hopes = self._hopes(readings, half_steps.reshape(-1, 2))
+        self.changes = self._changes(readings[1])
+        self.hopes = self._hopes(readings[0], readings[2])
 
     def _spread(self, values, empty):
         full = np.full((len(values), len(self.places)), empty)
@@ -241,14 +265,22 @@ class Scan:
             grid = operation(operation(grid, ahead), behind)
         return grid.reshape(len(values), -1)
 
-    def _hopes(self, readings, half_steps):
+    def _changes(self, slopes):
+        """(2, q, n, m) the most that errors could change over half a step along either axis.
+
+        By the slopes at a place and at its neighbours.
+        """
+        steps = pairs(self.half_steps)[self.clear]
+        changes = np.abs(np.einsum("qnma,msa->sqnm", slopes, steps))
+        return np.stack([
+            [self._around(self._spread(np.nan_to_num(part), 0.0), np.maximum) for part in axis]
+            for axis in changes
+        ])
+
+    def _hopes(self, errors, trust):
         """(m, n) the least that the errors could be within half a step of every place."""
-        errors, slopes, trust = readings
-        steps = np.stack([half_steps.real, half_steps.imag], axis=-1)[self.clear]
         hopes = None
-        for part, slope in zip(np.abs(errors), slopes, strict=True):
-            change = np.abs(np.einsum("nma,msa->snm", slope, steps)).sum(axis=0)
-            change = self._around(self._spread(np.nan_to_num(change), 0.0), np.maximum)
+        for part, change in zip(np.abs(errors), self.changes.sum(axis=0), strict=True):
             value = self._spread(part, np.nan)
             # Beside a place that is not allowed, half a step may lead to one that is.
             beside = self._around(value - change, np.fmin)

@@ -5,17 +5,19 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.optimize import minimize
+from scipy.spatial import cKDTree
 
 from offbody.choices import Mount, Search
 from offbody.errors import InputError
+from offbody.exclusions import Exclusion
 from offbody.model import inside
 from offbody.scans import WITHIN, Ratings, Scan, pairs, sets_of
 from offbody.surveys import survey
 
-RINGS = 24  # lengths of a scan,
-FINE_RINGS = 10  # and of the second one
+RINGS = 26  # lengths of a scan,
+FINE_RINGS = 12  # and of the second one, for sets of booms
 TRIAL_LENGTHS = 100  # among which the shortest that stands clear is sought
-AROUND = {1: 120, 2: 90, 3: 36}  # angles of a scan, for one boom or for sets of two or three,
+AROUND = {1: 100, 2: 90, 3: 36}  # angles of a scan, for one boom or for sets of two or three,
 LEAST_AROUND = 36  # and where every place is read at many points
 GRID = {1: 2500, 2: 350, 3: 70}  # places of a scan in an area,
 DENSITIES = (1, 3, 10, 30)  # times as many, where little of it is allowed
@@ -97,40 +99,55 @@ class _RegionSearch:
                 "spacing or keep_out would help"
             )
 
-    def _distinct(self, scan, ratings, lengths, taken, most):
-        """The best sets of a scan that differ from each other and from those taken."""
+    def _distinct(self, scan, ratings, lengths):
+        """The best sets of a scan that differ from each other."""
         order = np.lexsort(ratings.keys(self.site.limit, lengths).T[::-1])
         places = scan.places[ratings.sets[order]]
         left = np.ones(len(order), bool)
-        for z in taken:
-            left &= self._differs(places, z)
-        while len(taken) < most and left.any():
-            first = int(left.argmax())
-            taken.append(places[first])
-            yield ratings.sets[order[first]]
-            left &= self._differs(places, places[first])
+        for _ in range(self.site.asked.choices):
+            if left.any():
+                first = int(left.argmax())
+                yield ratings.sets[order[first]]
+                left &= self._differs(places, places[first])
 
-    def _result(self, starts, steps, scans, best, bound, step, curve):
-        """The Mounts of refined starts, by what the scans showed."""
-        judged = sorted(
-            (self._refined(variables, steps) for variables in starts), key=lambda one: one.key
-        )
+    def _result(self, scan, steps, step):
+        """The Mounts of a scan's best sets, refined, and what the scan and its cells exclude."""
+        site = self.site
+        found, hoped = self._scanned(scan)
+        self._refuse_none(found)
+        lengths = self._lengths_of(scan, found)
+        best = self._best(found, lengths)
+        starts = [self._variables(scan, one) for one in self._distinct(scan, found, lengths)]
+        judged = sorted((self._refined(start, steps) for start in starts), key=lambda j: j.key)
+        bound, places = self._bound(best[0], scan, hoped), len(scan.places)
+        by_length = self._has_length and judged[0].key[0] == 0
+        looked_at = scan
+        if by_length and site.asked.count > 1 and bound < judged[0].key[1]:
+            # Of sets there are too many to split their cells: look at lengths more closely.
+            looked_at = self._scan(np.linspace(max(bound, self.room), judged[0].key[1], FINE_RINGS))
+            _, hoped = self._scanned(looked_at)
+            bound = max(bound, self._bound(0, looked_at, hoped))
+            places += len(looked_at.places)
+        if judged[0].key[0] < 2:
+            proof = Exclusion(self, looked_at, hoped, by_length, judged[0].key[1])
+            bound, places = max(bound, proof.bound), places + proof.places
+            if proof.better is not None and self._judged(proof.better) is not None:
+                judged.insert(0, self._refined(proof.better, steps))
+                judged = sorted(judged, key=lambda j: j.key)[: site.asked.choices]
         mounts = [self._mount(one) for one in judged]
-        level = 1 if best[0] == 0 and not self._has_length else int(best[0])
-        quantity = ("length", "worst error", "share")[level]
+        quantity = "length" if by_length else "share" if judged[0].key[0] == 2 else "worst error"
         search = Search(
             quantity=quantity,
-            places=sum(len(scan.places) for scan, _ in scans),
-            sets=sum(len(ratings.sets) for _, ratings in scans),
+            places=places,
+            sets=len(found.sets),
             step=step,
-            scan_best=abs(float(best[1])),
+            scan_best=abs(float(best[1])) if best[0] == judged[0].key[0] else np.nan,
             refined=getattr(mounts[0], quantity.replace(" ", "_")),
-            bound=float(bound),
+            bound=bound,
         )
+        curve = self._curve(scan, found, mounts[0])
         notes = self._notes(judged[0], search)
-        return self.site.asked.result(
-            self.where, mounts, self.site.limit, curve, search, notes
-        )
+        return site.asked.result(self.where, mounts, site.limit, curve, search, notes)
 
     def _mount(self, judged):
         """The Mount of a judged set."""
@@ -280,9 +297,11 @@ class _Refinement:
         mine = (slice(None), np.arange(len(winds)), self.serves[winds])
         if not slopes:
             return errors[mine], None
-        moves = self.search.moves(variables)[self.serves[winds]]
-        gradient = gradients[mine]
-        rates = gradient[..., 0, None] * moves.real + gradient[..., 1, None] * moves.imag
+        gradient, axes = gradients[mine], self.search.axes(len(variables))
+        along = self.search.along(variables)[self.serves[winds]]
+        both = gradient[..., :1] * along.real + gradient[..., 1:] * along.imag
+        rates = np.zeros((*both.shape[:2], len(variables)))
+        np.put_along_axis(rates, np.broadcast_to(axes[self.serves[winds]], both.shape), both, -1)
         return errors[mine], rates
 
     def _constraints(self, unknowns, winds):
@@ -367,41 +386,10 @@ class BoomSearch(_RegionSearch):
         return headings, np.radians(sweep) / max(number - 1, 1), False
 
     def found(self):
-        first = self._scan(self._first_lengths())
-        found, hoped = self._scanned(first)
-        self._refuse_none(found)
-        best = self._best(found, self._lengths_of(first, found))
-        bound = self._bound(best[0], first, hoped)
-        scans = [(first, found)]
-        lengths = self._lengths_between(best, bound, first, hoped)
-        if lengths is not None:
-            fine = self._scan(lengths)
-            again, hoped = self._scanned(fine)
-            bound = max(bound, self._bound(best[0], fine, hoped))
-            scans.insert(0, (fine, again))
-        # Where it is shortest the second scan knows more; what else there is, only the first.
-        wanted, taken, starts = self.site.asked.choices, [], []
-        for most, (scan, ratings) in zip([1, wanted][-len(scans):], scans, strict=True):
-            lengths = self._lengths_of(scan, ratings)
-            for one in self._distinct(scan, ratings, lengths, taken, most):
-                starts.append(self._variables(scan, one))
-        step = float(np.diff(self._radii(first)).max(initial=0.0))
+        scan = self._scan(self._first_lengths())
+        step = float(np.diff(self._radii(scan)).max(initial=0.0))
         steps = np.array([step / self.size] + [self.turn] * self.site.asked.count)
-        curve = _merged([self._curve(scan, ratings) for scan, ratings in scans])
-        return self._result(
-            starts, steps, scans, best, bound, (step, float(np.degrees(self.turn))), curve
-        )
-
-    def _lengths_between(self, best, bound, scan, hoped):
-        """Lengths of the second scan: those at which the first one leaves room for a better set."""
-        if best[0] == 2 or not bound < best[1]:
-            return None
-        if best[0] == 0:
-            return np.linspace(max(bound, 1e-6 * self.size), best[1], FINE_RINGS)
-        radii = self._radii(scan)
-        rows = hoped.sets[hoped.worst <= best[1], 0] // scan.shape[1]
-        low, high = max(rows.min() - 1, 0), min(rows.max() + 1, len(radii) - 1)
-        return np.linspace(radii[low], radii[high], FINE_RINGS)
+        return self._result(scan, steps, (step, float(np.degrees(self.turn))))
 
     def _first_lengths(self):
         """Lengths of the first scan, from the shortest that may stand somewhere to the greatest."""
@@ -449,27 +437,48 @@ class BoomSearch(_RegionSearch):
         rows = hoped.sets[hoped.worst <= self.site.limit * WITHIN, 0] // scan.shape[1]
         return float(below[rows].min(initial=radii[-1]))
 
-    def _curve(self, scan, ratings):
-        """Length, least worst error and greatest share of every ring that has a set."""
+    def _curve(self, scan, ratings, best):
+        """Length, least worst error and greatest share of every ring, and those of the best."""
         radii, rows = self._radii(scan), ratings.sets[:, 0] // scan.shape[1]
         worst, share = np.full(len(radii), np.inf), np.zeros(len(radii))
         np.minimum.at(worst, rows, ratings.worst)
         np.maximum.at(share, rows, ratings.share)
-        some = np.isin(np.arange(len(radii)), rows)
-        return np.stack([radii, worst, share])[:, some]
+        some = np.isin(np.arange(len(radii)), rows) & (radii != best.length)
+        place = np.searchsorted(radii[some], best.length)
+        return {
+            name: np.insert(values[some], place, getattr(best, name))
+            for name, values in (("length", radii), ("worst_error", worst), ("share", share))
+        }
+
+    def cells(self, scan, sets):
+        """Middles and halves (t, d) of the cells round sets of a scan's places."""
+        arms = scan.places[sets] - self.foot
+        lengths = np.abs(arms[:, :1])
+        along = np.abs(scan.half_steps[sets[:, :1], 0])
+        halves = np.hstack([along / self.size, np.full(sets.shape, 0.5 * self.turn)])
+        return np.hstack([lengths / self.size, np.angle(arms)]), halves
 
     def _variables(self, scan, one):
         arms = scan.places[one] - self.foot
         return np.array([np.abs(arms[0]) / self.size, *np.angle(arms)])
 
     def place(self, variables):
-        """Places (k,) of the variables."""
-        return self.foot + variables[0] * self.size * np.exp(1j * variables[1:])
+        """Places (..., k) of variables (..., d)."""
+        return self.foot + variables[..., :1] * self.size * np.exp(1j * variables[..., 1:])
 
-    def moves(self, variables):
-        """(k, variables) complex moves of the places per unit of the variables."""
-        ahead = self.size * np.exp(1j * variables[1:])
-        return np.column_stack([ahead, np.diag(1j * variables[0] * ahead)])
+    def along(self, variables):
+        """(..., k, 2) complex moves of places, per unit along the booms and round the foot."""
+        ahead = self.size * np.exp(1j * variables[..., 1:])
+        return np.stack([ahead, 1j * variables[..., :1] * ahead], axis=-1)
+
+    @staticmethod
+    def axes(dimensions):
+        """(k, 2) which variable moves a place along each of them."""
+        return np.array([[0, place] for place in range(1, dimensions)])
+
+    def leeway(self, z):
+        """(m,) how far places are from where no mount may stand; negative where none may."""
+        return self.site.leeway(z, self.room)
 
     def bounds(self, variables, steps):
         """How far the refinement may go: a step and a half, within the region."""
@@ -503,13 +512,6 @@ class BoomSearch(_RegionSearch):
         return float(np.abs(along).max()), float(np.radians(np.abs(around).max()))
 
 
-def _merged(curves):
-    """The curve of all scans, by growing length."""
-    whole = np.concatenate(curves, axis=1)
-    whole = whole[:, np.unique(whole[0].round(12), return_index=True)[1]]
-    return dict(zip(("length", "worst_error", "share"), whole, strict=True))
-
-
 def _joined(ratings):
     """Ratings of several rings, end to end."""
     names = ("sets", "worst", "share", "mean")
@@ -528,22 +530,15 @@ class AreaSearch(_RegionSearch):
     def __init__(self, site, where):
         super().__init__(site, where)
         ring = where.points(2000)
+        self._ring = cKDTree(ring)
         self.low, self.sides = ring.min(axis=0), np.ptp(ring, axis=0)
         self.size = float(self.sides.max())
         self.room = max(site.clearance, OFF_WALL * self.size)
 
     def found(self):
         scan = self._scan()
-        found, hoped = self._scanned(scan)
-        self._refuse_none(found)
-        best = self._best(found, None)
-        bound = float(hoped.share.max() if best[0] == 2 else hoped.worst.min())
-        distinct = self._distinct(scan, found, None, [], self.site.asked.choices)
-        starts = [(pairs(scan.places[one]) / self.size).ravel() for one in distinct]
         steps = np.tile(self.step, self.site.asked.count) / self.size
-        return self._result(
-            starts, steps, [(scan, found)], best, bound, tuple(self.step.tolist()), None
-        )
+        return self._result(scan, steps, tuple(self.step.tolist()))
 
     def _scan(self):
         """The scan of a grid that is dense enough for the part of the area that is allowed."""
@@ -572,13 +567,44 @@ class AreaSearch(_RegionSearch):
         """By how much two places may come closer within half a step."""
         return float(np.hypot(*self.step))
 
-    def place(self, variables):
-        """Places (k,) of the variables."""
-        return self.size * (variables[::2] + 1j * variables[1::2])
+    def cells(self, scan, sets):
+        """Middles and halves (t, d) of the cells round sets of a scan's places."""
+        middles = pairs(scan.places[sets]).reshape(len(sets), -1) / self.size
+        halves = np.tile(0.5 * self.step / self.size, (len(sets), sets.shape[1]))
+        return middles, halves
 
-    def moves(self, variables):
-        """(k, variables) complex moves of the places per unit of the variables."""
-        return self.size * np.kron(np.eye(len(variables) // 2), [1, 1j])
+    def place(self, variables):
+        """Places (..., k) of variables (..., d)."""
+        return self.size * (variables[..., ::2] + 1j * variables[..., 1::2])
+
+    def along(self, variables):
+        """(..., k, 2) complex moves of the places, per unit along x and y."""
+        shape = (*variables.shape[:-1], variables.shape[-1] // 2, 2)
+        return np.broadcast_to(self.size * np.array([1.0, 1j]), shape)
+
+    @staticmethod
+    def axes(dimensions):
+        """(k, 2) which variable moves a place along each of them."""
+        return np.arange(dimensions).reshape(-1, 2)
+
+    def leeway(self, z):
+        """(m,) how far places are from where no mount may stand; negative where none may."""
+        distance = self._ring.query(pairs(z))[0]
+        fence = np.where(inside(self.where, pairs(z)), distance, -distance)
+        return np.minimum(fence, self.site.leeway(z, self.room))
+
+    def _variables(self, scan, one):
+        return (pairs(scan.places[one]) / self.size).ravel()
+
+    def _lengths_of(self, scan, ratings):
+        return None
+
+    def _bound(self, level, scan, hoped):
+        """What no finer search could pass."""
+        return float(hoped.share.max() if level == 2 else hoped.worst.min())
+
+    def _curve(self, scan, ratings, best):
+        return None
 
     def bounds(self, variables, steps):
         """How far the refinement may go: a step and a half."""
