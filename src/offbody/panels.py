@@ -9,19 +9,16 @@ from numpy.polynomial import legendre
 from offbody.images import Copies
 
 
-def reach(order):
-    """Half-chords from a panel's middle beyond which its nodes are as good as the closed form.
+# Half-chords from a panel's middle beyond which its nodes are as good as the closed form. Farther on
+# the recursion would lose digits; nearer, low orders would leap where the one gives way to the other.
+# For order 1, where the odd series takes over. bench/formulations.py prints the table behind it.
+_REACH = {1: 3.0, 2: 20.0, 3: 10.0, 4: 8.0, 5: 6.0, 6: 5.0, 7: 5.0, 8: 4.0, 9: 3.5, 10: 3.0, 11: 2.5}
+_REACH_OF_HIGH_ORDERS = 2.0
 
-    The error of the node sum is about rho^(-2 order), rho = t + sqrt(t^2 - 1): beyond where that is
-    1e-15, but no farther than the recursion up to order + 1 keeps eight digits, (2 t)^(order + 1),
-    nor than 30; and not below 2, for panels that curve. For order 1, where the odd series takes
-    over. bench/formulations.py prints the table behind it.
-    """
-    if order == 1:
-        return 3.0
-    rho = 10.0 ** (7.5 / order)
-    lost = 0.5 * 10.0 ** (8.0 / (order + 1))
-    return float(np.clip(0.5 * (rho + 1.0 / rho), 2.0, max(2.0, min(lost, 30.0))))
+
+def reach(order):
+    """How far panels of an order are near, in half-chords from their middle."""
+    return _REACH.get(order, _REACH_OF_HIGH_ORDERS)
 
 
 @dataclass(frozen=True, eq=False)
