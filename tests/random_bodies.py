@@ -34,9 +34,9 @@ def random_bodies(seed):
 
 def judged(bodies, model):
     """Return a model's greatest error of surface speed by far finer panels, and these' own."""
-    judge = ob.solve(bodies, panels=[2 * count for count in model.panel_counts])
-    if judge.estimated_error > 0.01 * model.estimated_error:
-        judge = ob.solve(bodies, panels=[2 * count for count in judge.panel_counts])
+    judge = model
+    while judge.estimated_error > 0.01 * model.estimated_error:
+        judge = ob.solve(bodies, panels=[3 * count // 2 for count in judge.panel_counts])
     wrong = 0.0
     for body in range(len(bodies)):
         wall = judge.surface(body, DIRECTIONS)

@@ -80,13 +80,14 @@ def test_the_splitting_of_cells_finds_what_the_scan_stepped_over():
 
 
 def test_the_longer_the_boom_the_less_the_worst_error_of_a_trade_off(mast):
-    curve = ob.best_mounts(mast, ob.Reach(3.0), directions=range(-45, 46, 3)).curve
+    curve = ob.best_mounts(mast, ob.Reach(3.0), directions=range(-45, 46)).curve
     assert np.all(np.diff(curve["length"]) > 0), curve["length"]
     clear = curve["length"] > DIAMETER
     np.testing.assert_array_less(np.diff(curve["worst_error"][clear]), 0.0)
-    # Exact: (a / r)^2, whatever the bearing, over an arc of 90 degrees.
+    # Exact: (a / r)^2, whatever the bearing, over an arc of 90 degrees, but for the half of a
+    # degree that the extreme lies off the nearest wind.
     exact = (DIAMETER / 2 / curve["length"][clear]) ** 2
-    np.testing.assert_allclose(curve["worst_error"][clear], exact, rtol=1e-6)
+    np.testing.assert_allclose(curve["worst_error"][clear], exact, rtol=1e-3)
 
 
 def test_two_booms_share_the_winds_that_one_cannot_serve(mast):

@@ -279,6 +279,13 @@ class Mounts:
         What was looked at, and what that excludes.
     notes : tuple of str
         What the reader must know.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> mast = ob.solve(ob.circle(0.3))
+    >>> ob.best_mounts(mast, ob.Reach(3.0, sector=(180, 180)), directions=[0.0])
+    Mounts(1 choices, length 1.5, none beyond 1.485)
     """
 
     model: object
@@ -302,7 +309,24 @@ class Mounts:
         return self.choices[0]
 
     def survey(self, choice=0, **angles):
-        """The ``ob.Survey`` of one choice, for the winds asked for or for others."""
+        """The ``ob.Survey`` of one choice, for the winds asked for or for others.
+
+        Parameters
+        ----------
+        choice : int
+            From 0, the best.
+        **angles
+            ``directions`` or ``bearings``, as ``ob.survey`` takes them.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> mast = ob.solve(ob.circle(0.3))
+        >>> found = ob.best_mounts(mast, ob.Reach(3.0, sector=(180, 180)), directions=[0.0])
+        >>> found.survey(directions=[0.0, 90.0]).speed_ratio.round(4)
+        array([[0.99],
+               [1.01]])
+        """
         if not angles:
             angles = {"bearings" if self.by_bearing else "directions": self.angles}
         return survey(self.model, list(self.choices[choice].sensors), **angles)

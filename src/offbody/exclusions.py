@@ -7,7 +7,7 @@ most, and the halves are read; branch and bound. The slope in a half is taken as
 the whole, and no greater than at the middles of the two halves and once more their difference.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -15,6 +15,7 @@ from offbody.scans import WITHIN
 
 CLOSE_ENOUGH = 0.01  # of the quantity sought: a set better by less is not looked for
 MOST_ROUNDS = 24
+CORNERS = np.array([[1.0, 1.0, -1.0, -1.0], [1.0, -1.0, 1.0, -1.0]])
 MOST_READINGS = 1_500_000  # of sets, places, winds and quantities, in a round
 
 
@@ -74,6 +75,7 @@ class Exclusion:
             np.moveaxis(scan.changes[..., sets], (-2, -1), (0, 1)),
         )
         for _ in range(MOST_ROUNDS):
+            cells = self._without_untrusted(cells.where(self._promising(cells)))
             cells = cells.where(self._promising(cells))
             self.complete = not len(cells.middles)
             if self.complete or 2 * cells.changes.size > MOST_READINGS:
@@ -96,6 +98,19 @@ class Exclusion:
         z, reach = self.search.place(cells.middles), self._reach(cells)
         leeway = self.search.leeway(z.ravel()).reshape(z.shape)
         return promising & (leeway >= -reach).all(axis=1)
+
+    def _without_untrusted(self, cells):
+        """The same, without hope in the winds in which no corner of a cell is trusted.
+
+        Wakes are wedges: one that holds all corners holds the cell.
+        """
+        search, site = self.search, self.site
+        moves = search.along(cells.middles) * cells.halves[:, search.axes(cells.middles.shape[1])]
+        z = search.place(cells.middles)[..., None] + moves @ CORNERS
+        clear = site.clear(z.ravel(), search.room).reshape(z.shape)
+        trust = np.ones((*z.shape, cells.hopes.shape[2]), bool)
+        trust[clear] = site.trust(z[clear]).T
+        return replace(cells, hopes=np.where(trust.any(axis=2), cells.hopes, np.inf))
 
     def _reach(self, cells):
         """(t, k) how far the places of a set may lie from their middles."""
@@ -125,8 +140,6 @@ class Exclusion:
         least = (errors - changes.sum(axis=2)).max(axis=3)
         known = np.isfinite(least)
         hopes = np.maximum(cells.hopes, np.where(known, least, 0.0))
-        untrusted = known.all(axis=0) & ~trust.any(axis=0)
-        hopes = np.where(untrusted, np.inf, hopes)
         self._keep_better(middles, errors.max(axis=3), trust)
         return _Cells(
             middles.reshape(-1, dimensions),

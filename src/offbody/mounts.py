@@ -107,7 +107,7 @@ def best_mounts(
     --------
     >>> import offbody as ob
     >>> mast = ob.solve(ob.circle(0.3))
-    >>> found = ob.best_mounts(mast, ob.Reach(3.0), directions=range(-45, 46, 3))
+    >>> found = ob.best_mounts(mast, ob.Reach(3.0), directions=range(-45, 46))
     >>> round(found.best.length, 3)                 # five diameters
     1.5
     >>> port = ob.best_mounts(mast, ob.Stretch(0, 0.5, 1.0), directions=[0.0]).best

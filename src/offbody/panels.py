@@ -8,11 +8,12 @@ from numpy.polynomial import legendre
 
 from offbody.images import Copies
 
-
-# Half-chords from a panel's middle beyond which its nodes are as good as the closed form. Farther on
-# the recursion would lose digits; nearer, low orders would leap where the one gives way to the other.
-# For order 1, where the odd series takes over. bench/formulations.py prints the table behind it.
-_REACH = {1: 3.0, 2: 20.0, 3: 10.0, 4: 8.0, 5: 6.0, 6: 5.0, 7: 5.0, 8: 4.0, 9: 3.5, 10: 3.0, 11: 2.5}
+# Half-chords from a panel's middle beyond which its nodes are as good as the closed form. Farther
+# on the recursion would lose digits; nearer, low orders would leap where the one gives way to the
+# other. For order 1, where the odd series takes over. bench/formulations.py prints the table.
+_REACH = {
+    1: 3.0, 2: 20.0, 3: 10.0, 4: 8.0, 5: 6.0, 6: 5.0, 7: 5.0, 8: 4.0, 9: 3.5, 10: 3.0, 11: 2.5,
+}
 _REACH_OF_HIGH_ORDERS = 2.0
 
 

@@ -183,6 +183,18 @@ class Site:
                     gradients[row, :, part] = scale * np.einsum("nmsa,s->nma", values, share)
         return errors, gradients, trusted
 
+    def trust(self, z):
+        """(n, m) whether all that a mount carries is trusted, at places that are clear."""
+        directions, carried = self.asked.directions, self._lighter[0]
+        trust = np.ones((len(directions), len(z)), bool)
+        at_once = max(1, READINGS_AT_ONCE // (len(directions) * self.samples))
+        for first in range(0, len(z), at_once):
+            part = slice(first, first + at_once)
+            sensors = [one.moved(*place) for place in pairs(z[part]) for one in carried]
+            table = survey(self.asked.model, sensors, directions, reynolds=self.asked.reynolds)
+            trust[:, part] = table.trust.reshape(len(directions), -1, len(carried)).all(axis=2)
+        return trust
+
     def errors(self, z):
         """(n, m) errors of the places alone: the greatest of the parts, infinite without trust."""
         errors, _, trust = self.read(z, self.asked.directions, slopes=False)

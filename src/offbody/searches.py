@@ -25,6 +25,7 @@ DISTINCT = 12.0  # degrees between booms that count as another choice
 DISTINCT_SHARE = 0.1  # the same in an area, of its size
 WIDE_GAP = 0.1  # between what was found and the bound, beyond which a note says so
 OFF_WALL = 1e-6  # of the region's size: a sensor stands clear of walls
+ON_EDGE = 1e-9  # of the region's size: rounding puts no place beyond its edge
 MOST_EXCHANGES = 6
 
 
@@ -478,7 +479,14 @@ class BoomSearch(_RegionSearch):
 
     def leeway(self, z):
         """(m,) how far places are from where no mount may stand; negative where none may."""
-        return self.site.leeway(z, self.room)
+        arm = z - self.foot
+        length = np.abs(arm)
+        leeway = np.minimum(self.size - length, length - self.where.least) + ON_EDGE * self.size
+        if self.where.sector is not None:
+            middle, half = self.headings[[0, -1]].mean(), 0.5 * np.ptp(self.headings[[0, -1]])
+            off = np.abs(np.angle(arm * np.exp(-1j * middle)))
+            leeway = np.minimum(leeway, length * (half - off) + ON_EDGE * self.size)
+        return np.minimum(leeway, self.site.leeway(z, self.room))
 
     def bounds(self, variables, steps):
         """How far the refinement may go: a step and a half, within the region."""
