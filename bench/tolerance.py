@@ -3,9 +3,9 @@
     python bench/tolerance.py [--first 0] [--count 200]
 
 The bodies of ``tests/random_bodies.py`` are asked for the tolerances 1e-4, 1e-5 ... 1e-9 in turn.
-The judge has half as many panels again, and again until its own estimated error is a hundredth of
-the model's. The error is the greatest difference of surface speed at the judge's nodes, between those
-of the model, in nine directions.
+The judge has half as many panels again, and again if its own estimated error is not a hundredth of
+the model's. The error is the greatest difference of surface speed at the judge's nodes, which lie
+between the model's, in nine directions.
 """
 
 import argparse

@@ -938,3 +938,8 @@ def test_the_force_where_a_prescribed_circulation_leaves_an_edge_unbounded_is_na
 def test_a_section_on_map_coordinates_is_solved_with_a_warning_that_says_where_to_put_it():
     with pytest.warns(ob.AccuracyWarning, match="NACA 2412 section.*nearer to"):
         ob.solve(ob.four_digit("2412").moved(433512.0, 5921231.0))
+
+
+def test_more_nodes_than_the_dense_equation_takes_are_refused_before_memory_is():
+    with pytest.raises(ob.InputError, match="24000 nodes, more than the 16000 .* fewer panels"):
+        ob.solve(ob.circle(1.0), panels=1500)

@@ -7,9 +7,9 @@ import warnings
 
 import numpy as np
 import pytest
-from random_bodies import judged, random_bodies
 
 import offbody as ob
+from random_bodies import judged, random_bodies
 
 TOLERANCES = (1e-4, 1e-5, 1e-6, 1e-7, 1e-8, 1e-9)
 

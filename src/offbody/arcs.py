@@ -70,7 +70,9 @@ class Arcs:
         self._measure()
         self.edge = None if outline.edge is None else 0.0
         before, after = (outline.derivative(self._corners + side) for side in (-BESIDE, BESIDE))
-        self.kinks = self.breaks[np.abs(np.angle(after / before)) > KINK]
+        with np.errstate(divide="ignore", invalid="ignore"):
+            turn = np.abs(np.angle(after / before))
+        self.kinks = self.breaks[(turn > KINK) | (self.breaks == self.edge)]
         self.start = float(self.at_parameter(np.array([outline.start]))[0]) % self.length
 
     @property

@@ -17,7 +17,9 @@ import numpy as np
 from scipy.linalg import lu_factor, lu_solve
 
 from offbody import flow
+from offbody.errors import InputError
 
+MOST_NODES = 16_000  # three matrices of 2 GB, half a minute
 BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way to a field
 
 
@@ -25,6 +27,13 @@ class Equation:
     """The second-kind equation on the walls of a set of panels."""
 
     def __init__(self, panels, surroundings):
+        if len(panels.nodes) > MOST_NODES:
+            size = 3 * 8e-9 * len(panels.nodes) ** 2
+            raise InputError(
+                f"the panels have {len(panels.nodes)} nodes, more than the {MOST_NODES} that the "
+                f"dense equation takes ({size:.0f} GB for these); give fewer panels, a lower "
+                "order, or larger corner radii and gaps"
+            )
         self.panels, self.surroundings = panels, surroundings
         self._bodies = [panels.node_slice(body) for body in range(panels.bodies)]
         self._lengths = [panels.weights[part].sum() for part in self._bodies]

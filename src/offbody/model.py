@@ -126,16 +126,20 @@ def _refined(walls, gaps, tolerance, given):
     length.
     """
     coarseness, floor = 1.0 + 0.2 * max(0.0, np.log10(tolerance) + 9.0), 1.0
-    goal, best, stalls = MARGIN * tolerance, None, 0
+    goal, best, stalls, shrinking = MARGIN * tolerance, None, 0, True
     for attempt in range(1, ATTEMPTS + 1):
-        model = Model(walls, lay(walls, gaps, [None] * len(walls), coarseness, floor), *given)
+        ends = lay(walls, gaps, [None] * len(walls), coarseness, floor)
+        if best is not None and given[1] * sum(map(len, ends)) > MOST_NODES:
+            break
+        model = Model(walls, ends, *given)
         model.solves, error = attempt, model.estimated_error
-        stalls = stalls + 1 if best is not None and error > 0.5 * best.estimated_error else 0
+        stalls = 0 if shrinking or error < 0.5 * best.estimated_error else stalls + 1
         best = model if best is None or error < best.estimated_error else best
-        if error <= goal or stalls == 2 or model.node_count > MOST_NODES:
+        if error <= goal or stalls == 2:
             break  # there, or rounding has taken over
         at_breaks, elsewhere = model._let_through()
-        if at_breaks > goal and floor > LEAST_FLOOR:
+        shrinking = at_breaks > goal and floor > LEAST_FLOOR
+        if shrinking:
             floor = max(LEAST_FLOOR, floor * np.clip(0.5 * goal / at_breaks, 1e-4, 0.5))
         else:
             elsewhere = max(elsewhere, at_breaks)
