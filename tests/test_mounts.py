@@ -331,7 +331,8 @@ def test_the_command_writes_the_choices_the_trade_off_and_the_page(case, tmp_pat
     assert kept["columns"].keys() == kept["choices"][0].keys()
     assert kept["search"]["bound"] <= length == kept["search"]["refined"]
     # A folder of its own making may be replaced.
-    assert main(["mounts", str(path), "--out", str(tmp_path / "out"), "--overwrite"]) == 0
+    again = case("reach = { greatest = 3.0, bearings = [270, 270] }\nbearings = [270]\n")
+    assert main(["mounts", str(again), "--out", str(tmp_path / "out"), "--overwrite"]) == 0
 
 
 def test_a_case_asks_for_ports_and_areas_too(case, tmp_path):

@@ -24,13 +24,15 @@ class _Cells:
     """Sets of cells: t sets of k places, with two axes each, n winds and q quantities.
 
     middles, halves (t, d) of the search's variables; hopes (t, k, n) the least possible errors,
-    infinite without trust; changes (t, k, 2, q, n) of the errors, over half a cell along each axis.
+    infinite without trust; changes (t, k, 2, q, n) of the errors, over half a cell along each axis;
+    trusted (t, k, n) at the middle, or not known there.
     """
 
     middles: np.ndarray
     halves: np.ndarray
     hopes: np.ndarray
     changes: np.ndarray
+    trusted: np.ndarray
 
     def where(self, chosen):
         """Those sets that are chosen."""
@@ -73,6 +75,7 @@ class Exclusion:
             halves[first],
             scan.hopes[sets],
             np.moveaxis(scan.changes[..., sets], (-2, -1), (0, 1)),
+            np.ones(scan.hopes[sets].shape, bool),
         )
         for _ in range(MOST_ROUNDS):
             cells = self._without_untrusted(cells.where(self._promising(cells)))
@@ -106,11 +109,16 @@ class Exclusion:
         """
         search, site = self.search, self.site
         moves = search.along(cells.middles) * cells.halves[:, search.axes(cells.middles.shape[1])]
-        z = search.place(cells.middles)[..., None] + moves @ CORNERS
-        clear = site.clear(z.ravel(), search.room).reshape(z.shape)
+        doubt = (~cells.trusted & np.isfinite(cells.hopes)).any(axis=2)
+        z = search.place(cells.middles)[doubt, None] + moves[doubt] @ CORNERS
+        stands = site.stands(z.ravel()).reshape(z.shape)
         trust = np.ones((*z.shape, cells.hopes.shape[2]), bool)
-        trust[clear] = site.trust(z[clear]).T
-        return replace(cells, hopes=np.where(trust.any(axis=2), cells.hopes, np.inf))
+        trust[stands] = site.trust(z[stands]).T
+        hopes = cells.hopes.copy()
+        hopes[doubt] = np.where(
+            trust.any(axis=1) | cells.trusted[doubt], cells.hopes[doubt], np.inf
+        )
+        return replace(cells, hopes=hopes)
 
     def _reach(self, cells):
         """(t, k) how far the places of a set may lie from their middles."""
@@ -141,28 +149,30 @@ class Exclusion:
         known = np.isfinite(least)
         hopes = np.maximum(cells.hopes, np.where(known, least, 0.0))
         self._keep_better(middles, errors.max(axis=3), trust)
+        trusted = trust | ~known
         return _Cells(
             middles.reshape(-1, dimensions),
             np.concatenate([halves, halves]),
             hopes.reshape(-1, *hopes.shape[2:]),
             np.concatenate([changes, changes]),
+            trusted.reshape(-1, *trusted.shape[2:]),
         )
 
     def _read(self, middles, halves):
         """Errors (2, t, k, q, n), changes (2, t, k, 2, q, n) and trust (2, t, k, n) of halves.
 
-        NaN where no place is allowed.
+        NaN where there is no flow; what is not allowed is read, for the part of its cell that is.
         """
         search, site = self.search, self.site
         z, along = search.place(middles), search.along(middles)
-        clear = (search.leeway(z.ravel()) >= 0) & site.clear(z.ravel(), search.room)
-        errors, slopes, trust = site.read(z.ravel()[clear], site.asked.directions, exactly=False)
-        self.places += int(clear.sum())
+        stands = site.stands(z.ravel())
+        errors, slopes, trust = site.read(z.ravel()[stands], site.asked.directions, exactly=False)
+        self.places += int(stands.sum())
         parts, winds = errors.shape[:2]
 
         def spread(values, empty):
             full = np.full((z.size, *values.shape[1:]), empty, dtype=values.dtype)
-            full[clear] = values
+            full[stands] = values
             return full.reshape(*z.shape, *values.shape[1:])
 
         slopes = spread(np.moveaxis(slopes, 2, 0), np.nan)  # (2, t, k, q, n, 2)
@@ -175,8 +185,10 @@ class Exclusion:
         return errors.reshape(*z.shape, parts, winds), own, spread(trust.T, False)
 
     def _keep_better(self, middles, errors, trust):
-        """Note the best set of places that were read, if it beats what was found."""
-        errors = np.where(trust & np.isfinite(errors), errors, np.inf)
+        """Note the best set of allowed places that were read, if it beats what was found."""
+        z = self.search.place(middles)
+        allowed = (self.search.leeway(z.ravel()) >= 0).reshape(z.shape)[..., None]
+        errors = np.where(allowed & trust & np.isfinite(errors), errors, np.inf)
         worst = errors.min(axis=2).max(axis=2)
         quantity = worst
         if self.by_length:

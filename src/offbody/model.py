@@ -329,9 +329,8 @@ class Model:
         if self._is_pushed:
             strengths, onset = self._pushed(directions, self._wall_normal_speeds(directions))
             return strengths, None, onset @ [1.0, -1j]
-        onset, circulations = self._onset(directions, np.zeros(len(directions)), None)
-        rows = np.concatenate([self._unit, self._spin])
-        combination = np.concatenate([onset, circulations], axis=1)
+        combination, _ = self._combination(directions)
+        rows, onset = np.concatenate([self._unit, self._spin]), combination[:, :2]
         if len(directions) < len(rows):
             return combination @ rows, None, onset @ [1.0, -1j]
         return rows, combination, onset @ [1.0, -1j]
@@ -397,9 +396,7 @@ class Model:
             return self._errors(rows, free), None
         if combination is None:
             # as few rows as directions: the combination is that of the unit flows all the same
-            components, circulations = self._onset(directions, np.zeros(len(directions)), None)
-            combination = np.concatenate([components, circulations], axis=1)
-            return combination @ self._unit_errors, None
+            return self._combination(directions)[0] @ self._unit_errors, None
         return self._unit_errors, combination
 
     def _wall_errors(self, directions, part=np.real):
@@ -480,15 +477,32 @@ class Model:
         self._refuse_along(given, flux, result, edges)
         onset = onset + result.sum(axis=1)[:, None] * shift[:, :, 0]
         if edges:
-            unit, spin = self._kutta(self._unit), self._kutta(self._spin)
-            miss = onset @ unit + result @ spin
-            if moved is not None:
-                miss = miss + self._kutta(moved)
-            system = spin[edges] + (shift[:, :, 0] @ unit)[:, None, :]
-            found = np.linalg.solve(np.swapaxes(system, 1, 2), -miss[..., None])[..., 0]
-            result[:, edges] = found
-            onset = onset + found.sum(axis=1)[:, None] * shift[:, :, 0]
+            gamma = onset @ self._unit + result @ self._spin
+            smooth = self._kept_smooth(shift, gamma if moved is None else gamma + moved)
+            onset, result = onset + smooth[:, :2], result + smooth[:, 2:]
         return onset, result
+
+    def _kept_smooth(self, shift, gamma):
+        """(directions, 2 + turning bodies) onset and circulations to be added for smooth edges.
+
+        gamma (directions, N) are wall speeds, or changes of them, that break Kutta conditions.
+        """
+        added = np.zeros((len(gamma), 2 + len(self._turning)))
+        edges = [k for k, body in enumerate(self._turning) if self._prescribed[body] is None]
+        if edges:
+            unit, spin = self._kutta(self._unit), self._kutta(self._spin)
+            system = spin[edges] + (shift[:, :, 0] @ unit)[:, None, :]
+            miss = self._kutta(gamma)
+            found = np.linalg.solve(np.swapaxes(system, 1, 2), -miss[..., None])[..., 0]
+            added[:, 2 + np.array(edges)] = found
+            added[:, :2] = found.sum(axis=1)[:, None] * shift[:, :, 0]
+        return added
+
+    def _combination(self, directions):
+        """(directions, 2 + turning bodies) shares of the unit flows without wakes, and _shift."""
+        still = np.zeros(len(directions))
+        onset, circulations = self._onset(directions, still, None)
+        return np.concatenate([onset, circulations], axis=1), self._shift(_components(directions))
 
     def _shift(self, onset):
         """(directions, 2, 2): what a unit circulation, a unit source must add to the onset.

@@ -96,21 +96,32 @@ class Site:
 
         ``room``: at least so far from walls.
         """
-        model = self.asked.model
-        offsets = np.concatenate([sensor.points for sensor in self.carried]) @ [1, 1j]
         clear = self.leeway(z, room) >= 0
-        points = z[clear, None] + offsets
-        blocked = inside(model, pairs(points)) | ~holds(model.surroundings, points)
+        points = z[clear, None] + self._offsets
+        blocked = np.zeros(points.shape, bool)
         for outline in self.keep_out:
             blocked |= inside(outline, pairs(points))
-        clear[clear] = ~blocked.any(axis=1)
+        clear[clear] = self.stands(z[clear]) & ~blocked.any(axis=1)
+        return clear
+
+    def stands(self, z):
+        """(m,) whether all that a mount carries stands in the flow, allowed or not."""
+        model = self.asked.model
+        points = z[:, None] + self._offsets
+        in_flow = ~inside(model, pairs(points)) & holds(model.surroundings, points)
+        stands = in_flow.all(axis=1)
         walls = [wall @ [1, 1j] for wall in model.walls]
         for sensor in self.carried:
             if len(sensor.points) > 1:
-                for place in np.flatnonzero(clear):
+                for place in np.flatnonzero(stands):
                     here = sensor.moved(z[place].real, z[place].imag)
-                    clear[place] = not any(here.meets(wall) for wall in walls)
-        return clear
+                    stands[place] = not any(here.meets(wall) for wall in walls)
+        return stands
+
+    @cached_property
+    def _offsets(self):
+        """Sample points of all that a mount carries, from its place, complex."""
+        return np.concatenate([sensor.points for sensor in self.carried]) @ [1, 1j]
 
     def sensors(self, z):
         """What the mounts at z carry, end to end, without names."""
