@@ -9,6 +9,7 @@ from numpy.testing import assert_allclose, assert_array_equal, assert_array_less
 
 import exact
 import offbody as ob
+from offbody import equation, fast_sum
 
 SQUARE = ob.polygon([(-0.5, -0.5), (0.5, -0.5), (0.5, 0.5), (-0.5, 0.5)], corner_radius=0.1)
 SECTION = ob.four_digit("2412")
@@ -940,6 +941,24 @@ def test_a_section_on_map_coordinates_is_solved_with_a_warning_that_says_where_t
         ob.solve(ob.four_digit("2412").moved(433512.0, 5921231.0))
 
 
-def test_more_nodes_than_the_dense_equation_takes_are_refused_before_memory_is():
-    with pytest.raises(ob.InputError, match="24000 nodes, more than the 16000 .* fewer panels"):
-        ob.solve(ob.circle(1.0), panels=1500)
+def test_an_iteration_finds_the_same_as_factors(monkeypatch):
+    bodies = [ob.circle(1.0, (1.1 * i, 1.2 * j)) for i in range(2) for j in range(2)]
+    bodies.append(ob.four_digit("2412").moved(3.0, 0.3))
+    points = [(-3.0, 0.7), (0.55, 0.0), (3.5, 1.0)]
+    found = []
+    for most in (10**6, 10):
+        monkeypatch.setattr(equation, "FACTORISED", most)
+        model = ob.solve(bodies, circulation=[0.5, None, None, None, None])
+        found.append(np.append(model.velocity(points, 20.0), model.circulation(20.0)))
+    # The iteration's residual of 1e-12, and the condition number of an edge, 70.
+    assert_allclose(found[1], found[0], rtol=0, atol=1e-9)
+
+
+def test_the_fast_sum_on_a_grid_is_the_plain_one():
+    model = ob.solve([ob.circle(1.0, (2.0 * i, 0.0)) for i in range(10)])
+    x, y = np.linspace(-1.0, 20.0, 150), np.linspace(-2.0, 2.0, 120)
+    assert fast_sum.worth_it(model._panels, 150 * 120, 2, grid=True)
+    found = model.grid(x, y, [0.0, 30.0, 77.0])
+    some = np.stack(np.meshgrid(x[::7], y[::11]), axis=-1)
+    # The fast sum's own tolerance, 1e-12 of the greatest velocity.
+    assert_allclose(found[:, ::11, ::7], model.velocity(some, [0.0, 30.0, 77.0]), atol=1e-11)

@@ -1,4 +1,4 @@
-"""The equation on the walls, assembled and factorised once for any number of right-hand sides.
+"""The equation on the walls, made ready once for any number of right-hand sides.
 
 The tangential velocity just inside every wall is zero. With walls counter-clockwise, W = g conj(T)
 on the wall, g = gamma + i v and the known outward normal velocity v:
@@ -17,34 +17,40 @@ import numpy as np
 from scipy.linalg import lu_factor, lu_solve
 
 from offbody import flow
-from offbody.errors import InputError
+from offbody.krylov import Iteration
 
-MOST_NODES = 16_000  # three matrices of 2 GB, half a minute
+FACTORISED = 2000  # nodes up to which LU factors of the matrix take less time than an iteration
+FACTORISED_FOR_MANY = 12_000  # the same where every direction is a right-hand side of its own
+RESIDUAL = 1e-12   # of an iteration
 BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way to a field
 
 
 class Equation:
-    """The second-kind equation on the walls of a set of panels."""
+    """The second-kind equation on the walls of a set of panels.
 
-    def __init__(self, panels, surroundings):
-        if len(panels.nodes) > MOST_NODES:
-            size = 3 * 8e-9 * len(panels.nodes) ** 2
-            raise InputError(
-                f"the panels have {len(panels.nodes)} nodes, more than the {MOST_NODES} that the "
-                f"dense equation takes ({size:.0f} GB for these); give fewer panels, a lower "
-                "order, or larger corner radii and gaps"
-            )
+    many : whether many right-hand sides are to be expected, as with wakes, one for each direction.
+    """
+
+    def __init__(self, panels, surroundings, many=False):
         self.panels, self.surroundings = panels, surroundings
         self._bodies = [panels.node_slice(body) for body in range(panels.bodies)]
         self._lengths = [panels.weights[part].sum() for part in self._bodies]
-        self._root = np.sqrt(panels.weights)
+        if len(panels.nodes) > (FACTORISED_FOR_MANY if many else FACTORISED):
+            self._invert = Iteration(panels, surroundings, RESIDUAL)
+        else:
+            self._invert = self._factorised()
+
+    def _factorised(self):
+        """A function from right-hand sides (R, N) to gamma (R, N), by LU factors."""
+        panels, surroundings, root = self.panels, self.surroundings, np.sqrt(self.panels.weights)
         matrix = flow.wall_influence(panels, surroundings)
         matrix[np.diag_indices_from(matrix)] -= 1.0
         for part, length in zip(self._bodies, self._lengths, strict=True):
             matrix[part] -= self._mean(matrix, part, length)
             matrix[part, part] -= panels.weights[part] / length
-        matrix *= self._root[:, None] / self._root
-        self._factors = lu_factor(matrix, overwrite_a=True, check_finite=False)
+        matrix *= root[:, None] / root
+        factors = lu_factor(matrix, overwrite_a=True, check_finite=False)
+        return lambda right: lu_solve(factors, (right * root).T, check_finite=False).T / root
 
     def _mean(self, rows, part, length):
         """Mean over a body's wall, by arc length, of (N, ...) rows.
@@ -64,8 +70,7 @@ class Equation:
             right[part] -= self._mean(right, part, length)
             if circulation is not None:
                 right[part] -= circulation[:, body] / length
-        scaled = right * self._root[:, None]
-        return lu_solve(self._factors, scaled, check_finite=False).T / self._root
+        return self._invert(right.T)
 
     def without_flux(self, blown):
         """Normal velocities (R, N) less their mean over each wall."""
@@ -79,8 +84,14 @@ class Equation:
         along = self.wall_velocity(1j * blown).real
         return self.vortices(along) + 1j * blown
 
+    def pushed(self, blown):
+        """gamma (R, N) of normal velocities (R, N) on the walls, no circulation, time and again."""
+        if isinstance(self._invert, Iteration):
+            return self.response(blown).real
+        return blown @ self._blowing
+
     @cached_property
-    def blowing(self):
+    def _blowing(self):
         """(N, N) gamma of a unit normal velocity at each node, no circulation."""
         return self.response(np.eye(len(self.panels.nodes))).real
 

@@ -8,13 +8,15 @@ velocity, dW/dz its gradient, and the integral of W along the wall the complex p
 import numpy as np
 from numpy.polynomial import legendre
 
-from offbody import _kernels, images
+from offbody import _kernels, fast_sum, images
 from offbody.images import Copies
 from offbody.panels import to_ends
 from offbody.parallel import over_chunks
 from offbody.surroundings import reflected
 
 OVER_TWO_PI_I = 1.0 / (2j * np.pi)
+MATRIX_ENTRIES = 4_000_000  # of an influence matrix at a time: two of 32 MB
+FAST_TOLERANCE = 1e-12      # of a fast sum, over its largest value: as good as the plain one
 
 
 def wall_influence(panels, surroundings):
@@ -55,6 +57,12 @@ def velocity_by_matrix(panels, surroundings, strengths, z):
 
 
 def _by_matrix(panels, strengths, z):
+    at_once = max(1, MATRIX_ENTRIES // len(panels.nodes))
+    parts = [z[first : first + at_once] for first in range(0, len(z), at_once)] or [z]
+    return np.concatenate([_by_one_matrix(panels, strengths, part) for part in parts], axis=1)
+
+
+def _by_one_matrix(panels, strengths, z):
     real, imag = _influence(
         panels, panels.place_modes, panels.place_tangents, z, np.ones(len(z), complex)
     )
@@ -65,6 +73,16 @@ def _by_matrix(panels, strengths, z):
         source = np.ascontiguousarray(places.imag)
         total += 1j * (source @ real.T) - source @ imag.T
     return total
+
+
+def velocity_on_grid(panels, surroundings, strengths, x, y):
+    """(R, len(y), len(x)) complex velocity of strengths (R, N) on the tensor grid of x and y."""
+    alone = surroundings.mirror is None and surroundings.period is None
+    if alone and fast_sum.worth_it(panels, len(x) * len(y), len(strengths), grid=True):
+        plan = fast_sum.GridPlan(panels, x, y, FAST_TOLERANCE)
+        return plan.apply(*_velocity_density(panels, strengths))
+    z = (x + 1j * y[:, None]).ravel()
+    return velocity(panels, surroundings, strengths, z).reshape(-1, len(y), len(x))
 
 
 def velocity(panels, surroundings, strengths, z):
@@ -81,7 +99,26 @@ def gradient(panels, surroundings, strengths, z):
     half = 0.5 * (panels.ends[:, 1] - panels.ends[:, 0])
     slope = legendre.legder(np.moveaxis(coefficients, -1, 0), axis=0)
     slope = np.moveaxis(slope, 0, -1) / half[:, None]
-    return _field(panels, surroundings, *_from_coefficients(panels, slope), z)
+    total = _field(panels, surroundings, *_from_coefficients(panels, slope), z)
+    if panels.edged.any():
+        total += _point_field(panels, surroundings, *_steps_at_edges(panels, strengths), z)
+    return total
+
+
+def _steps_at_edges(panels, strengths):
+    """Points, and charges (R, points) that the density's steps are there: where it is not closed.
+
+    At a sharp edge it starts and ends with values of their own; the true one falls to rest there,
+    within less than a panel's length.
+    """
+    values = _at_places(panels, strengths) * panels.place_tangents.conj()
+    first = panels.starts[:-1][panels.edged]
+    last = panels.starts[1:][panels.edged] - 1
+    points = np.concatenate([panels.ends[first, 0], panels.ends[last, 1]])
+    steps = np.concatenate(
+        [values[:, first, panels.order], -values[:, last, panels.order + 1]], axis=1
+    )
+    return points, OVER_TWO_PI_I * steps
 
 
 def potential(panels, surroundings, strengths, cuts, downstream, z):
@@ -173,18 +210,23 @@ def _gradient_of_constant(panels, surroundings, strengths, z):
     for body in range(panels.bodies):
         part = panels.panel_slice(body)
         jumps[:, part] -= np.roll(wall[:, part], 1, axis=1)
-    corners = np.ascontiguousarray(panels.ends[:, 0])
+    return _point_field(panels, surroundings, panels.ends[:, 0], jumps, z)
+
+
+def _point_field(panels, surroundings, points, charges, z):
+    """(R, len(z)) sum of charge/(z - point), charges (R, points), images included."""
+    points = np.ascontiguousarray(points)
 
     def free(z):
-        out = np.zeros((len(strengths), len(z)), complex)
+        out = np.zeros((len(charges), len(z)), complex)
         over_chunks(
-            lambda part: _kernels.point_field(corners, jumps, z[part], out[:, part]),
-            len(z), len(corners) * len(strengths),
+            lambda part: _kernels.point_field(points, charges, z[part], out[:, part]),
+            len(z), len(points) * len(charges),
         )
         return out
 
-    copies = Copies.of(corners, surroundings.period)
-    return images.fields(copies, surroundings, free, jumps, z)
+    copies = None if panels.copies is None else Copies.of(points, panels.copies.period)
+    return images.fields(copies, surroundings, free, charges, z)
 
 
 def _field(panels, surroundings, coefficients, charges, z):
@@ -196,6 +238,8 @@ def _field(panels, surroundings, coefficients, charges, z):
 def _sum(panels, coefficients, charges, z):
     coefficients = np.ascontiguousarray(coefficients, complex)
     charges = np.ascontiguousarray(charges, complex)
+    if fast_sum.worth_it(panels, len(z), len(charges)):
+        return fast_sum.Plan(panels, z, FAST_TOLERANCE).apply(coefficients, charges)
     out = np.zeros((len(charges), len(z)), complex)
 
     def work(part):

@@ -295,7 +295,7 @@ class Model:
 
     def _solve(self):
         panels = self._panels
-        self._equation = Equation(panels, self.surroundings)
+        self._equation = Equation(panels, self.surroundings, many=any(self.wakes))
         self._unit = self._equation.vortices(_pairs(panels.tangents).T)
         self._turning = [
             body for body, given in enumerate(self._prescribed)
@@ -684,16 +684,20 @@ class Model:
         pairs = _pairs(complex_velocity.conj())
         return _shaped(pairs.reshape(pairs.shape[:1] + points.shape), directions)
 
-    def _velocity(self, z, directions, mask=True):
+    def _velocity(self, z, directions):
         """(directions, len(z)) complex velocity u - i v."""
         rows, combination, onset = self._state(directions)
         evaluate = flow.velocity if len(rows) < BY_MATRIX else flow.velocity_by_matrix
         fields = evaluate(self._panels, self.surroundings, rows, z)
         total = fields if combination is None else combination @ fields
-        total = total + onset[:, None]
+        return self._whole_velocity(total, onset, z, directions)
+
+    def _whole_velocity(self, of_walls, onset, z, directions):
+        """(directions, len(z)) velocity of the walls, the onset and the bracings together."""
+        total = of_walls + onset[:, None]
         if self.bracings:
             total += self._screens.strengths(directions) @ self._screens.velocity(z)
-        return self._masked(total, z) if mask else total
+        return self._masked(total, z)
 
     def _field(self, direction):
         """The complex velocity u - i v for one direction, as a function of complex points (m,)."""
@@ -1046,7 +1050,14 @@ class Model:
         for name, axis in (("x", x), ("y", y)):
             if axis.ndim != 1:
                 raise InputError(f"{name} must be a vector of grid lines; got shape {axis.shape}")
-        return self.velocity(np.stack(np.meshgrid(x, y), axis=-1), direction)
+        directions = self._directions(direction)
+        flat, z = np.atleast_1d(directions), (x + 1j * y[:, None]).ravel()
+        rows, combination, onset = self._state(flat)
+        fields = flow.velocity_on_grid(self._panels, self.surroundings, rows, x, y)
+        fields = fields.reshape(len(rows), -1)
+        total = fields if combination is None else combination @ fields
+        pairs = _pairs(self._whole_velocity(total, onset, z, flat).conj())
+        return _shaped(pairs.reshape(len(flat), len(y), len(x), 2), directions)
 
     def _directions(self, direction):
         return self.surroundings.admit(as_directions("direction", direction))

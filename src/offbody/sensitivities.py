@@ -24,6 +24,7 @@ from offbody.surveys import Survey
 MOTIONS = (("x", "1/length"), ("y", "1/length"), ("turn", "1/degree"), ("size", "1"))
 X, Y, TURN, SIZE = range(4)
 DEGREE = np.pi / 180.0
+SMALLEST = 1e-10  # share of a flow, over the largest, which is left out
 
 
 @dataclass(frozen=True, eq=False)
@@ -136,6 +137,9 @@ class _Flows:
         self.onset[:2, 0] = 1.0, -1j
         self.fields = model._equation.velocity(self.rows, self.places)
         self.combination, self.shift = model._combination(table.directions)
+        # Few flows that leave their edges smoothly, as the unit flows do not, stand for all.
+        _, sizes, kept = np.linalg.svd(self.combination, full_matrices=False)
+        self.kept = kept[sizes > SMALLEST * sizes.max(initial=0.0)]
 
     def by_direction(self):
         """Changes per degree: (n, m) velocity u + i v at the samples, (n, N) wall speed."""
@@ -159,9 +163,9 @@ class _Flows:
         fields = self.model._equation.velocity(rows.reshape(-1, rows.shape[-1]), self.places)
         fields = fields.reshape(own.shape) + own
         factors = np.array([1.0, 1.0, DEGREE, 1.0])[:, None, None]
-        still = np.zeros_like(self.combination)
+        still, shares = np.zeros_like(self.combination), self.combination @ self.kept.T
         return [
-            self._changed(still, self.combination @ field, self.combination @ row)
+            self._changed(still, shares @ field, shares @ row)
             for field, row in zip(factors * fields, factors * rows, strict=True)
         ]
 
@@ -173,15 +177,15 @@ class _Flows:
         """
         change = change + self.model._kept_smooth(self.shift, change @ self.rows + speed)
         velocity = velocity + change @ (self.fields + self.onset)
-        return velocity.conj(), change @ self.rows + speed
+        return velocity.conj(), speed + change @ self.rows
 
     def _tangent(self, body, about):
-        """Changes per unit of a body's four motions, a turn in radians, of all unit flows.
+        """Changes per unit of a body's four motions, a turn in radians, of the flows kept.
 
         Of the strengths, (4, R, N), and of the velocity that the strengths of the moving body
         induce at the samples as it carries them along, (4, R, m).
         """
-        model, rows = self.model, self.rows
+        model, rows, onset = self.model, self.kept @ self.rows, self.kept @ self.onset
         panels, part = model._panels, model._panels.node_slice(body)
         own = np.zeros_like(rows)
         own[:, part] = rows[:, part]
@@ -216,7 +220,7 @@ class _Flows:
         here[part] = True
         change[:, :, ~here] = everywhere(moving, panels.nodes[~here])
         change[:, :, part] = of_images(moving, nodes) + displaced[:, None] * outer(flow.gradient)
-        change[TURN][:, part] += 1j * (self.onset + outer(flow.velocity))
+        change[TURN][:, part] += 1j * (onset + outer(flow.velocity))
         circulation = np.zeros((4, len(rows), panels.bodies))
         # A wall that grows is to keep its circulation, not its strengths.
         circulation[SIZE, :, body] = -(own @ panels.weights)

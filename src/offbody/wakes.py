@@ -397,7 +397,7 @@ def _marched_whole(model, body, directions, breadths):
 def _gamma(model, directions, blown):
     """(directions, N) wall speeds with normal speeds blown through the walls."""
     flux = blown @ model._panels.weights
-    return model._wall_flow(directions, flux, blown @ model._equation.blowing)[0]
+    return model._wall_flow(directions, flux, model._equation.pushed(blown))[0]
 
 
 def _miss(model, body, directions, lee, speeds, breadths):
