@@ -215,7 +215,7 @@ def _gradient_of_constant(panels, surroundings, strengths, z):
 
 def _point_field(panels, surroundings, points, charges, z):
     """(R, len(z)) sum of charge/(z - point), charges (R, points), images included."""
-    points = np.ascontiguousarray(points)
+    points, charges = np.ascontiguousarray(points), np.ascontiguousarray(charges)
 
     def free(z):
         out = np.zeros((len(charges), len(z)), complex)
