@@ -528,15 +528,16 @@ def worth_it(panels, targets, densities=1, grid=False):
     """
     nodes, poles, plain = len(panels.nodes), len(panels.nodes), densities
     if getattr(panels, "order", None) == 1:
-        poles, plain = nodes * _gauss_count(1e-9), densities + CONSTANT_PANEL - 1
+        poles = nodes * _gauss_count(1e-9, panels.geometry[9])
+        plain = densities + CONSTANT_PANEL - 1
     fast = PLANNING + PER_POLE * poles + (PER_GRID_POINT if grid else PER_TARGET) * targets
     return nodes * targets * plain > fast
 
 
-def _gauss_count(tolerance):
-    """Gauss points that do for a straight panel beyond 3 half-chords: the error is
-    (3 + sqrt(8))^-2n."""
-    return int(np.ceil(np.log(1.0 / tolerance) / 3.5)) + 1
+def _gauss_count(tolerance, reach):
+    """Gauss points that do for a straight panel: the error beyond its reach of t half-chords is
+    (t + sqrt(t^2 - 1))^-2n."""
+    return int(np.ceil(np.log(1.0 / tolerance) / (2.0 * np.arccosh(reach)))) + 1
 
 
 @dataclass(frozen=True)
@@ -593,7 +594,7 @@ class Plan:
         middle, half = panels.ends.mean(axis=1), 0.5 * np.diff(panels.ends, axis=1)[:, 0]
         nodes = panels.nodes.reshape(len(half), -1)
         if panels.order == 1:
-            s, shares = gauss(_gauss_count(tolerance))
+            s, shares = gauss(_gauss_count(tolerance, panels.geometry[9]))
             nodes = middle[:, None] + half[:, None] * s
             self._gauss = s, -shares * half[:, None]
         reach = np.abs(nodes - middle[:, None]).max(axis=1) + panels.geometry[9] * np.abs(half)
