@@ -317,7 +317,7 @@ def test_the_command_writes_the_choices_the_trade_off_and_the_page(case, tmp_pat
     assert main(["mounts", str(path), "--out", str(tmp_path / "out")]) == 0
     pictures = set() if charts.missing_library() else {"trade-off.png"}
     assert {entry.name for entry in (tmp_path / "out").iterdir()} == pictures | {
-        "mounts.csv", "mounts.json", "summary.txt",
+        "mounts.csv", "mounts.json", "report.html", "summary.txt",
     }
     printed = capsys.readouterr()
     assert printed.err == "" and "booms of 1.2" in printed.out, printed

@@ -15,6 +15,7 @@ import offbody as ob
 from offbody import charts, mount_reports, records, reports
 from offbody.cases import read_case
 from offbody.errors import AccuracyWarning, InputError
+from offbody.mount_pages import mounts_page
 from offbody.survey_pages import survey_page
 
 DONE, REFUSED, INTERRUPTED = 0, 2, 130
@@ -270,10 +271,12 @@ def _mounts(options):
             _advance(bar, "searching")
             found = case.best_mounts(model)
             page = mount_reports.summary(case, found, cautions)
+            report = mounts_page(case, found, found.survey(), cautions)
         _advance(bar, "writing")
         (folder / "summary.txt").write_text(page, encoding="utf-8")
         mount_reports.write_csv(folder / "mounts.csv", case, found)
         mount_reports.write_json(folder / "mounts.json", case, found)
+        (folder / "report.html").write_text(report, encoding="utf-8")
         no_pictures = charts.missing_library() if found.curve else None
         if found.curve and not no_pictures:
             charts.draw_trade_off(folder / "trade-off.png", case, found)
