@@ -1,7 +1,7 @@
 """What a body standing in a stream does to the readings of a sensor mounted on it or beside it."""
 
 from offbody._version import __version__
-from offbody.accuracy import Tolerance
+from offbody.accuracy import Sums, Tolerance
 from offbody.bearings import from_bearing, to_bearing
 from offbody.booms import Boom
 from offbody.bracings import Bracing
@@ -77,6 +77,7 @@ __all__ = [
     "Separation",
     "Stretch",
     "Survey",
+    "Sums",
     "Swept",
     "Tolerance",
     "Uncertainty",

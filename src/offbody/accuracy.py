@@ -10,6 +10,7 @@ twice as many points as nodes: between them it swings, and far off only its mean
 from dataclasses import dataclass
 
 from offbody.checks import as_number
+from offbody.errors import InputError
 
 ATTEMPTS = 12       # solves before a tolerance is given up
 MARGIN = 0.25       # of a tolerance, to which the estimate is brought: more may hide between nodes
@@ -50,3 +51,37 @@ class Tolerance:
     def __post_init__(self):
         number = as_number("surface_speed", self.surface_speed, least=1e-12, greatest=0.1)
         object.__setattr__(self, "surface_speed", number)
+
+
+@dataclass(frozen=True)
+class Sums:
+    """How a model sums its panels: the tolerance of fast sums, and whether they are used.
+
+    Parameters
+    ----------
+    tolerance : float
+        Error of a fast sum over its largest value, 1e-14 to 0.1.
+    fast : bool, optional
+        True or False to force fast or plain sums. None: whichever takes less time.
+
+    Raises
+    ------
+    InputError
+        If an argument is not such.
+
+    Examples
+    --------
+    >>> import offbody as ob
+    >>> model = ob.solve(ob.circle(2.0), sums=ob.Sums(tolerance=1e-6, fast=True))
+    >>> model.velocity((0.0, 2.0)).round(5) + 0.0
+    array([1.25, 0.  ])
+    """
+
+    tolerance: float = 1e-9
+    fast: bool | None = None
+
+    def __post_init__(self):
+        number = as_number("tolerance", self.tolerance, least=1e-14, greatest=0.1)
+        object.__setattr__(self, "tolerance", number)
+        if self.fast not in (True, False, None):
+            raise InputError(f"fast must be True, False or None, got {self.fast!r}")

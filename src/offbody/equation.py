@@ -16,7 +16,7 @@ from functools import cached_property
 import numpy as np
 from scipy.linalg import lu_factor, lu_solve
 
-from offbody import flow
+from offbody import fast_sum, flow
 from offbody.krylov import Iteration
 
 FACTORISED = 2000  # nodes up to which LU factors of the matrix take less time than an iteration
@@ -28,14 +28,17 @@ BY_MATRIX = 8  # strengths from which on the influence matrix is the cheaper way
 class Equation:
     """The second-kind equation on the walls of a set of panels.
 
-    many : whether many right-hand sides are to be expected, as with wakes, one for each direction.
+    many : whether many right-hand sides are to be expected, as with wakes, one for each direction;
+    iterate : whether to iterate, or None to do what takes less time.
     """
 
-    def __init__(self, panels, surroundings, many=False):
+    def __init__(self, panels, surroundings, many=False, iterate=None):
         self.panels, self.surroundings = panels, surroundings
         self._bodies = [panels.node_slice(body) for body in range(panels.bodies)]
         self._lengths = [panels.weights[part].sum() for part in self._bodies]
-        if len(panels.nodes) > (FACTORISED_FOR_MANY if many else FACTORISED):
+        if iterate is None:
+            iterate = len(panels.nodes) > (FACTORISED_FOR_MANY if many else FACTORISED)
+        if iterate:
             self._invert = Iteration(panels, surroundings, RESIDUAL)
         else:
             self._invert = self._factorised()
@@ -101,5 +104,7 @@ class Equation:
 
     def velocity(self, strengths, z):
         """(R, len(z)) complex velocity that strengths (R, N) induce at z."""
-        evaluate = flow.velocity if len(strengths) < BY_MATRIX else flow.velocity_by_matrix
-        return evaluate(self.panels, self.surroundings, strengths, z)
+        few = len(strengths) < BY_MATRIX
+        if few or fast_sum.worth_it(self.panels, len(z), len(strengths)):
+            return flow.velocity(self.panels, self.surroundings, strengths, z)
+        return flow.velocity_by_matrix(self.panels, self.surroundings, strengths, z)

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.polynomial import legendre
 
 from offbody import _kernels, fast_sum, images
+from offbody.fast_sum import GridPlan, Plan, Points
 from offbody.images import Copies
 from offbody.panels import to_ends
 from offbody.parallel import over_chunks
@@ -16,7 +17,7 @@ from offbody.surroundings import reflected
 
 OVER_TWO_PI_I = 1.0 / (2j * np.pi)
 MATRIX_ENTRIES = 4_000_000  # of an influence matrix at a time: two of 32 MB
-FAST_TOLERANCE = 1e-12      # of a fast sum, over its largest value: as good as the plain one
+INSIDE = 1e-3               # tolerance of a winding number, which is 0 or 1
 
 
 def wall_influence(panels, surroundings):
@@ -77,12 +78,22 @@ def _by_one_matrix(panels, strengths, z):
 
 def velocity_on_grid(panels, surroundings, strengths, x, y):
     """(R, len(y), len(x)) complex velocity of strengths (R, N) on the tensor grid of x and y."""
-    alone = surroundings.mirror is None and surroundings.period is None
-    if alone and fast_sum.worth_it(panels, len(x) * len(y), len(strengths), grid=True):
-        plan = fast_sum.GridPlan(panels, x, y, FAST_TOLERANCE)
-        return plan.apply(*_velocity_density(panels, strengths))
-    z = (x + 1j * y[:, None]).ravel()
-    return velocity(panels, surroundings, strengths, z).reshape(-1, len(y), len(x))
+    if panels.copies is not None or not _fast(panels, len(x) * len(y), len(strengths), grid=True):
+        z = (x + 1j * y[:, None]).ravel()
+        return velocity(panels, surroundings, strengths, z).reshape(-1, len(y), len(x))
+    density, tolerance = _velocity_density(panels, strengths), panels.sums.tolerance
+    total = GridPlan(panels, x, y, tolerance).apply(*density)
+    if surroundings.mirror is not None:
+        image = GridPlan(panels, x, 2.0 * surroundings.mirror - y, tolerance)
+        total += image.apply(*density).conj()
+    return total
+
+
+def _fast(panels, targets, densities, grid=False):
+    """Whether a sum is to be a fast one."""
+    if panels.sums.fast is None:
+        return fast_sum.worth_it(panels, targets, densities, grid)
+    return panels.sums.fast and len(panels.nodes) > 0
 
 
 def velocity(panels, surroundings, strengths, z):
@@ -218,6 +229,9 @@ def _point_field(panels, surroundings, points, charges, z):
     points, charges = np.ascontiguousarray(points), np.ascontiguousarray(charges)
 
     def free(z):
+        given = Points(points)
+        if fast_sum.worth_it(given, len(z), len(charges)) and panels.sums.fast is not False:
+            return Plan(given, z, panels.sums.tolerance).apply(None, charges)
         out = np.zeros((len(charges), len(z)), complex)
         over_chunks(
             lambda part: _kernels.point_field(points, charges, z[part], out[:, part]),
@@ -238,8 +252,8 @@ def _field(panels, surroundings, coefficients, charges, z):
 def _sum(panels, coefficients, charges, z):
     coefficients = np.ascontiguousarray(coefficients, complex)
     charges = np.ascontiguousarray(charges, complex)
-    if fast_sum.worth_it(panels, len(z), len(charges)):
-        return fast_sum.Plan(panels, z, FAST_TOLERANCE).apply(coefficients, charges)
+    if _fast(panels, len(z), len(charges)):
+        return Plan(panels, z, panels.sums.tolerance).apply(coefficients, charges)
     out = np.zeros((len(charges), len(z)), complex)
 
     def work(part):
@@ -247,6 +261,22 @@ def _sum(panels, coefficients, charges, z):
 
     over_chunks(work, len(z), len(panels.nodes) * len(charges))
     return out
+
+
+def inside(panels, z):
+    """(len(z),) whether each point is inside a body; a wall counts as outside."""
+    if _fast(panels, len(z), 1):
+        return Plan(panels, z, INSIDE).inside()
+    return enclosing_body(panels, z) >= 0
+
+
+def inside_on_grid(panels, x, y):
+    """(len(y), len(x)) whether each place of a tensor grid is inside a body."""
+    if panels.copies is None and _fast(panels, len(x) * len(y), 1, grid=True):
+        return GridPlan(panels, x, y, INSIDE).inside()
+    z = x + 1j * y[:, None]
+    z = z if panels.copies is None else panels.copies.home(z)
+    return inside(panels, z.ravel()).reshape(z.shape)
 
 
 def enclosing_body(panels, z):

@@ -23,15 +23,16 @@ from offbody.accuracy import (
     MOST_NODES,
     NEAR_EDGE,
     SHRINKING,
+    Sums,
     Tolerance,
 )
 from offbody.bracings import Bracing, Screens
 from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
-from offbody.equation import BY_MATRIX, Equation
+from offbody.equation import Equation
 from offbody.errors import AccuracyWarning, InputError
 from offbody.laying import lay, measure
 from offbody.outlines import Outline
-from offbody.panels import assemble, finer_places, from_finer, to_modes
+from offbody.panels import AS_PLAIN, assemble, finer_places, from_finer, to_modes
 from offbody.surroundings import KINDS, OpenStream, holds
 from offbody.tracing import trace
 from offbody.wakes import Lee, Wake, blown_speeds, settle
@@ -42,7 +43,7 @@ ALONG_ROW = 1e-11  # the cosine of an angle that is 90 degrees
 
 def solve(
     outlines, surroundings=None, panels=None, order=None, circulation=None, wakes=None,
-    bracings=None,
+    bracings=None, sums=None, iterate=None,
 ):
     """The potential flow about one or several bodies, ready for any direction.
 
@@ -67,6 +68,12 @@ def solve(
         Per body, None or the wake whose displacement is to be included.
     bracings : Bracing or sequence, optional
         Faces of lattice members between the bodies, which the flow passes through.
+    sums : Sums, optional
+        The tolerance of fast sums and whether they are used. None: used where they take less time,
+        as good as the plain ones.
+    iterate : bool, optional
+        Whether the equation is solved by iteration, in memory like the number of nodes, or by
+        factorisation. None: whichever takes less time.
 
     Returns
     -------
@@ -113,7 +120,12 @@ def solve(
     ]
     wakes = _as_wakes(wakes, len(bodies))
     walls, gaps = measure(bodies, surroundings)
-    given = (surroundings, order, circulations, wakes, _as_bracings(bracings))
+    sums = AS_PLAIN if sums is None else sums
+    if not isinstance(sums, Sums):
+        raise InputError(f"sums must be ob.Sums(...), got {sums!r}")
+    if iterate not in (True, False, None):
+        raise InputError(f"iterate must be True, False or None, got {iterate!r}")
+    given = (surroundings, order, circulations, wakes, _as_bracings(bracings), sums, iterate)
     if tolerance is None:
         return Model(walls, lay(walls, gaps, counts), *given)
     return _refined(walls, gaps, tolerance.surface_speed, given)
@@ -188,7 +200,7 @@ def inside(bodies, points):
         walls, gaps = measure(outlines, OpenStream())
         ends = lay(walls, gaps, [None] * len(walls))
         laid = assemble(walls, ends, DEFAULT_ORDER, OpenStream())
-    found = flow.enclosing_body(laid, _complex(points).ravel()) >= 0
+    found = flow.inside(laid, _complex(points).ravel())
     return found.reshape(points.shape[:-1]) if points.ndim > 1 else bool(found[0])
 
 
@@ -257,17 +269,20 @@ class Model:
         How many times a tolerance made it refine its panels, and the first.
     """
 
-    def __init__(self, walls, ends, surroundings, order, circulations, wakes, bracings):
+    def __init__(
+        self, walls, ends, surroundings, order, circulations, wakes, bracings, sums=AS_PLAIN,
+        iterate=None,
+    ):
         self.outlines = tuple(wall.outline for wall in walls)
         self.surroundings, self.order, self.wakes = surroundings, order, tuple(wakes)
         self.bracings = bracings
         self.solves = 1
         self._arcs = walls
-        self._panels = assemble(walls, ends, order, surroundings)
+        self._panels = assemble(walls, ends, order, surroundings, sums=sums)
         self._screens = Screens(bracings, surroundings)
         self._screens.refuse_unfit(self._panels)
         self._prescribed, self._settled = tuple(circulations), {}
-        self._solve()
+        self._solve(iterate)
 
     @property
     def node_count(self):
@@ -293,9 +308,9 @@ class Model:
 
     # --- the equation -----------------------------------------------------------------------
 
-    def _solve(self):
+    def _solve(self, iterate):
         panels = self._panels
-        self._equation = Equation(panels, self.surroundings, many=any(self.wakes))
+        self._equation = Equation(panels, self.surroundings, any(self.wakes), iterate)
         self._unit = self._equation.vortices(_pairs(panels.tangents).T)
         self._turning = [
             body for body, given in enumerate(self._prescribed)
@@ -687,17 +702,16 @@ class Model:
     def _velocity(self, z, directions):
         """(directions, len(z)) complex velocity u - i v."""
         rows, combination, onset = self._state(directions)
-        evaluate = flow.velocity if len(rows) < BY_MATRIX else flow.velocity_by_matrix
-        fields = evaluate(self._panels, self.surroundings, rows, z)
+        fields = self._equation.velocity(rows, z)
         total = fields if combination is None else combination @ fields
         return self._whole_velocity(total, onset, z, directions)
 
-    def _whole_velocity(self, of_walls, onset, z, directions):
+    def _whole_velocity(self, of_walls, onset, z, directions, inside=None):
         """(directions, len(z)) velocity of the walls, the onset and the bracings together."""
         total = of_walls + onset[:, None]
         if self.bracings:
             total += self._screens.strengths(directions) @ self._screens.velocity(z)
-        return self._masked(total, z)
+        return self._masked(total, z, inside)
 
     def _field(self, direction):
         """The complex velocity u - i v for one direction, as a function of complex points (m,)."""
@@ -714,10 +728,10 @@ class Model:
 
         return velocity
 
-    def _masked(self, values, z):
-        nowhere = flow.enclosing_body(self._panels, self._home(z)) >= 0
+    def _masked(self, values, z, inside=None):
+        inside = flow.inside(self._panels, self._home(z)) if inside is None else inside
         nothing = complex(np.nan, np.nan) if np.iscomplexobj(values) else np.nan
-        values[:, nowhere | ~holds(self.surroundings, z)] = nothing
+        values[:, inside | ~holds(self.surroundings, z)] = nothing
         return values
 
     def _home(self, z):
@@ -1056,7 +1070,8 @@ class Model:
         fields = flow.velocity_on_grid(self._panels, self.surroundings, rows, x, y)
         fields = fields.reshape(len(rows), -1)
         total = fields if combination is None else combination @ fields
-        pairs = _pairs(self._whole_velocity(total, onset, z, flat).conj())
+        inside = flow.inside_on_grid(self._panels, x, y).ravel()
+        pairs = _pairs(self._whole_velocity(total, onset, z, flat, inside).conj())
         return _shaped(pairs.reshape(len(flat), len(y), len(x), 2), directions)
 
     def _directions(self, direction):

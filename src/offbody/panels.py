@@ -6,7 +6,10 @@ from functools import cache
 import numpy as np
 from numpy.polynomial import legendre
 
+from offbody.accuracy import Sums
 from offbody.images import Copies
+
+AS_PLAIN = Sums(1e-12)  # fast sums as good as the plain ones
 
 # Half-chords from a panel's middle beyond which its nodes are as good as the closed form. Farther
 # on the recursion would lose digits; nearer, low orders would leap where the one gives way to the
@@ -44,6 +47,7 @@ class Panels:
     edged: np.ndarray           # (bodies,) bool: the body's first panel starts at a sharp edge
     copies: Copies | None       # where the surroundings repeat them
     geometry: tuple = field(repr=False, default=())
+    sums: Sums = AS_PLAIN       # how fields of them are summed
 
     @property
     def bodies(self):
@@ -73,7 +77,7 @@ class Panels:
         return np.array(rows)
 
 
-def assemble(walls, bodies, order, surroundings, closed=True):
+def assemble(walls, bodies, order, surroundings, closed=True, sums=AS_PLAIN):
     """The panels of all walls between given arc positions, one array of them for each body."""
     x, shares = gauss(order)
     starts = np.concatenate([[0], np.cumsum([len(ends) - 1 for ends in bodies])])
@@ -111,7 +115,7 @@ def assemble(walls, bodies, order, surroundings, closed=True):
         order, starts, np.stack([a, b], 1), normals, nodes, tangents, weights, arcs, end_arcs,
         modes, place_modes, np.ascontiguousarray(place_tangents), bulge, slack, size,
         np.array([wall.edge is not None for wall in walls]),
-        Copies.of(nodes, surroundings.period), geometry,
+        Copies.of(nodes, surroundings.period), geometry, sums,
     )
 
 
