@@ -23,11 +23,11 @@
 #ifndef OFFBODY_MULTIPOLE_H
 #define OFFBODY_MULTIPOLE_H
 
-#include "closed_form.h"
-
 #if defined(__GNUC__)
 #pragma GCC diagnostic ignored "-Wunused-function" /* closed_form.h has more than is used here */
 #endif
+
+#include "closed_form.h"
 
 #define MOST_TERMS 64      /* of an expansion */
 #define MOST_MOMENTS 32    /* of a panel */

@@ -6,7 +6,9 @@ there is a sharp edge, as the flow there carries the rounding of the edge's coor
 solutions are Lamb's and Milne-Thomson's, of ``exact``. Orders 2 and 3 are not promised.
 """
 
-import time
+import os
+import subprocess
+import sys
 
 import numpy as np
 import pytest
@@ -120,18 +122,28 @@ def test_the_estimate_covers_the_greatest_error_of_each_body_and_any_direction()
     np.testing.assert_array_less(0.1 * model.estimated_error, max(wrong))
 
 
-@pytest.mark.parametrize("outline", [
-    ob.ellipse(2.0, 0.2), ob.four_digit("4412"),
-    ob.polygon([(0, 0), (1, 0), (1, 1), (0, 1)], 0.1)])
-def test_an_estimate_costs_less_than_the_solution(outline):
+COST = """
+import time
+import offbody as ob
+ob.threads(1)
+for outline in (ob.ellipse(2.0, 0.2), ob.four_digit("4412"),
+                ob.polygon([(0, 0), (1, 0), (1, 1), (0, 1)], 0.1)):
     solving, estimating = [], []
-    for _ in range(5):
+    for _ in range(7):
         start = time.process_time()
         model = ob.solve(outline)
         middle = time.process_time()
-        _ = model.estimated_error
+        model.estimated_error
         estimating.append(time.process_time() - middle)
         solving.append(middle - start)
-    # Processor's time, best of five, as others may be at work: less than doubling it.
-    assert min(estimating) < min(solving), (
-        f"{1e3 * min(estimating):.1f} ms after {1e3 * min(solving):.1f} ms")
+    print(min(solving), min(estimating))
+"""
+
+
+def test_an_estimate_costs_less_than_the_solution():
+    # Processor's time of one thread, LAPACK's among them, which would wait in a busy loop: best of
+    # seven, as others may be at work. Less than doubling it.
+    run = subprocess.run([sys.executable, "-c", COST], capture_output=True, text=True, check=True,
+                         env=os.environ | {"OPENBLAS_NUM_THREADS": "1", "OMP_NUM_THREADS": "1"})
+    solving, estimating = np.array([line.split() for line in run.stdout.splitlines()], float).T
+    np.testing.assert_array_less(estimating, solving)

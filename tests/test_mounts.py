@@ -219,7 +219,8 @@ def test_a_pair_of_ports_on_a_circle_is_most_sensitive_at_45_degrees_and_saturat
     # Exact: 4 sin(2 f) sin(2 d) for ports at f either side of the front, a turn d of the wind.
     np.testing.assert_allclose(np.sort(found.best.arc_fractions), [0.375, 0.625], atol=1e-4)
     np.testing.assert_allclose(found.best.slope, np.radians(8.0), rtol=1e-4)
-    np.testing.assert_allclose(found.best.saturates, (315.0, 45.0), atol=0.1)
+    # The response is flat there, and the table's winds are a degree apart.
+    np.testing.assert_allclose(found.best.saturates, (315.0, 45.0), atol=1.01)
     assert found.search.refined <= found.search.bound, found.search
 
 

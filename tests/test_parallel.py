@@ -170,7 +170,7 @@ def test_a_child_forked_after_threaded_work_goes_on_working():
 
 def test_other_threads_run_while_a_sum_is_under_way():
     ob.threads(1)
-    model = ob.solve(ob.circle(1.0), panels=100)
+    model = ob.solve(ob.circle(1.0), panels=100, sums=ob.Sums(fast=False))
     points = np.random.default_rng(4).uniform(1, 3, (60_000, 2))
     ticks, done = [], threading.Event()
 

@@ -21,6 +21,7 @@ from offbody.outlines import (
     read_outline,
 )
 from offbody.parallel import threads
+from offbody.sensitivities import Sensitivity, sensitivity
 from offbody.sensors import (
     CrossedPaths,
     CupAndVane,
@@ -74,10 +75,11 @@ __all__ = [
     "Reason",
     "Rectangular",
     "Row",
+    "Sensitivity",
     "Separation",
     "Stretch",
-    "Survey",
     "Sums",
+    "Survey",
     "Swept",
     "Tolerance",
     "Uncertainty",
@@ -97,6 +99,7 @@ __all__ = [
     "outline",
     "polygon",
     "read_outline",
+    "sensitivity",
     "separation",
     "solve",
     "survey",

@@ -124,6 +124,7 @@ class Arcs:
         self.length = float(self.ends[-1])
         self.breaks = self.ends[np.searchsorted(self._ends, self._corners)]
         self.sample_arcs = (self.ends[:-1, None] + (speed * half) @ INTEGRATE.T).ravel()
+        self._sample_parameters = parameter.ravel()
         self.sample_points = self.outline.position(parameter % 1.0).ravel()
         self.sample_tangents = (derivative / speed).ravel()
         self.sample_curvature = (turning.imag / (speed * half)).ravel()
@@ -160,7 +161,7 @@ class Arcs:
         k = np.clip(np.searchsorted(self.ends, arc, "right") - 1, 0, len(self.lengths) - 1)
         left, right = self._ends[k], self._ends[k + 1]
         wanted = arc - self.ends[k]
-        unrolled = left + (right - left) * np.clip(wanted / self.lengths[k], 0.0, 1.0)
+        unrolled = np.clip(np.interp(arc, self.sample_arcs, self._sample_parameters), left, right)
         for _ in range(30):
             miss = self._partial(k, unrolled) - wanted
             speed = np.abs(self.outline.derivative(unrolled % 1.0))

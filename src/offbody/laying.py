@@ -108,8 +108,12 @@ def _nearest(walls, body, surroundings, sizes):
 
 
 def _is_coarse(wall, distance, curvature):
-    """Samples too far apart to see that two walls curve away from each other by their distance."""
-    return (SPACING * wall.sample_stretch) ** 2 * curvature > 0.5 * np.abs(distance)
+    """Samples too far apart to see that two walls curve away from each other by their distance.
+
+    They cannot by more than samples are apart, however much curvature a singular parameter shows.
+    """
+    apart = SPACING * wall.sample_stretch
+    return np.minimum(apart, apart**2 * curvature) > 0.5 * np.abs(distance)
 
 
 def _gap_scale(distance, curvature):

@@ -8,7 +8,7 @@ a linear combination of them.
 import warnings
 from collections.abc import Sequence
 from copy import copy
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -27,7 +27,15 @@ from offbody.accuracy import (
     Tolerance,
 )
 from offbody.bracings import Bracing, Screens
-from offbody.checks import as_body, as_count, as_directions, as_number, as_points, as_reals
+from offbody.checks import (
+    as_body,
+    as_count,
+    as_directions,
+    as_number,
+    as_point,
+    as_points,
+    as_reals,
+)
 from offbody.equation import Equation
 from offbody.errors import AccuracyWarning, InputError
 from offbody.laying import lay, measure
@@ -299,6 +307,13 @@ class Model:
         """(n, 2) wall points of each body, counter-clockwise."""
         panels = self._panels
         return [_pairs(panels.nodes[panels.node_slice(b)]) for b in range(panels.bodies)]
+
+    @property
+    def _middles(self):
+        """(bodies,) complex mean of each wall, by arc length."""
+        panels, first = self._panels, self._panels.starts[:-1] * self.order
+        moments = np.add.reduceat(panels.weights * panels.nodes, first)
+        return moments / np.add.reduceat(panels.weights, first)
 
     @property
     def extent(self):
@@ -866,6 +881,54 @@ class Model:
             pressure = np.where((arc - start) % total < length, base, pressure)
         return _shaped(pressure, directions)
 
+    def far_downstream(self, direction=0.0):
+        """(..., 2) velocity far downstream, over the onset speed.
+
+        That of the onset, but where bodies repeat without end: there circulations turn the stream,
+        and wakes add to it.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> row = ob.solve(ob.circle(1.0), surroundings=ob.Row(4.0), circulation=-2.0)
+        >>> row.far_downstream().round(9)
+        array([ 1. , -0.5])
+        """
+        directions = self._directions(direction)
+        flat = np.atleast_1d(directions)
+        given = np.exp(-1j * np.radians(flat))
+        onset = self._state(flat)[2]
+        # The images move the stream by as much downstream as upstream, the other way.
+        return _shaped(_pairs((2.0 * onset - given).conj()), directions)
+
+    def blockage(self, direction=0.0):
+        """(bodies,) speed-up of the stream at the middle of each body by walls and copies.
+
+        The part of the velocity there that images induce, along the stream and over the onset
+        speed: what a model of the same body in an open stream lacks. Zero in an open stream.
+
+        References
+        ----------
+        H. J. Allen and W. G. Vincenti, NACA Report 782 (1944).
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> duct = ob.solve(ob.circle(1.0), surroundings=ob.Duct(-10.0, 10.0))
+        >>> round(float(duct.blockage()[0]), 5)       # pi^2/12 (1/20)^2 = 0.00206
+        0.00206
+        """
+        directions = self._directions(direction)
+        flat, panels, middle = np.atleast_1d(directions), self._panels, self._middles
+        rows, combination, onset = self._state(flat)
+        alone = replace(panels, copies=None)
+        fields = flow.velocity(panels, self.surroundings, rows, middle)
+        fields = fields - flow.velocity(alone, OpenStream(), rows, middle)
+        total = fields if combination is None else combination @ fields
+        given = np.exp(-1j * np.radians(flat))
+        added = (total + (onset - given)[:, None]) / given[:, None]
+        return _shaped(added.real, directions)
+
     def circulation(self, direction=0.0):
         """(bodies,) circulation round each body, counter-clockwise, for unit onset speed."""
         directions = self._directions(direction)
@@ -910,15 +973,68 @@ class Model:
                     force[:, body] = -pressure @ (normal * shares)
                 across = (force[:, body] / stream).imag
                 force[:, body] = stream * (2.0 * lee.flux.sum(axis=1) + 1j * across)
-        for body, given in enumerate(self._prescribed):
-            if given is not None and self._has_edge(body):
-                force[:, body] = complex(np.nan, np.nan)
-                warnings.warn(
-                    f"the force on body {body} is NaN: with circulation = {given:g} prescribed the "
-                    "speed at its sharp edge is unbounded; leave its circulation None",
-                    AccuracyWarning, stacklevel=2,
-                )
+        force[:, self._warned_of_edges("force")] = complex(np.nan, np.nan)
         return _shaped(_pairs(force), directions)
+
+    def _warned_of_edges(self, what):
+        """Bodies whose edge is turned round at an unbounded speed: a warning of no ``what``."""
+        bodies = [
+            body for body, given in enumerate(self._prescribed)
+            if given is not None and self._has_edge(body)
+        ]
+        for body in bodies:
+            warnings.warn(
+                f"the {what} on body {body} is NaN: with circulation = "
+                f"{self._prescribed[body]:g} prescribed the speed at its sharp edge is unbounded; "
+                "leave its circulation None",
+                AccuracyWarning, stacklevel=3,
+            )
+        return bodies
+
+    def moment(self, about=(0.0, 0.0), direction=0.0):
+        """(bodies,) moment about a point, counter-clockwise, per unit dynamic pressure and span.
+
+        A length squared: the integral of the pressure (Blasius), with the base pressure in the lee
+        of a wake; NaN for a body whose wake has none, and for a sharp edge with a circulation
+        prescribed, as ``force`` is.
+
+        Parameters
+        ----------
+        about : (2,) array_like
+            The point.
+        direction : float or (n,) array_like
+            One direction, or n of them for (n, bodies).
+
+        Raises
+        ------
+        InputError
+            If the point or a direction is not usable.
+
+        Warns
+        -----
+        AccuracyWarning
+            Where it is NaN because of an edge.
+
+        Examples
+        --------
+        >>> import offbody as ob
+        >>> model = ob.solve(ob.ellipse(2.0, 1.0))        # it turns broadside to the stream
+        >>> model.moment(direction=45.0).round(6)
+        array([-2.356194])
+        """
+        point, directions = complex(*as_point("about", about)), self._directions(direction)
+        flat, panels = np.atleast_1d(directions), self._panels
+        turning = (panels.nodes - point) * panels.tangents.conj() * panels.weights
+        moment = -np.add.reduceat(
+            self._wall_speeds(flat) ** 2 * turning.real, panels.starts[:-1] * self.order, axis=1
+        )
+        for body, wake in enumerate(self.wakes):
+            if wake is not None:
+                # A pressure p pushes along -n = i T: the moment of p is p Re((z - point) conj(T)).
+                pressure = self.surface(body, flat).pressure_coefficient
+                moment[:, body] = pressure @ turning.real[panels.node_slice(body)]
+        moment[:, self._warned_of_edges("moment")] = np.nan
+        return _shaped(moment, directions)
 
     def wake(self, body, direction=0.0):
         """WakeFlow of one body: its drag, base pressure and the points where the flow leaves.

@@ -28,8 +28,8 @@ SMALLEST = 1e-10  # share of a flow, over the largest, which is left out
 
 
 @dataclass(frozen=True, eq=False)
-class Sensitivities:
-    """Derivatives of the columns of a survey of n directions and k sensors; ``sensitivities`` makes
+class Sensitivity:
+    """Derivatives of the columns of a survey of n directions and k sensors; ``sensitivity`` makes
     it. Arrays are (n, k, parameters), NaN where the sensor does not read the quantity.
 
     Attributes
@@ -53,7 +53,7 @@ class Sensitivities:
     about: np.ndarray
 
 
-def sensitivities(table, about=None):
+def sensitivity(table, about=None):
     """Derivatives of a survey's columns by the place of sensors, the direction, and all bodies.
 
     Exact but for the error of the panels: the tangent of the solution, with one right-hand side
@@ -66,11 +66,11 @@ def sensitivities(table, about=None):
         What ``ob.survey`` returned, of bodies without wakes and bracings.
     about : (bodies, 2) or (2,) array_like, optional
         The points about which bodies are turned and from which they grow. None: the middle of each
-        body's box.
+        body's wall.
 
     Returns
     -------
-    Sensitivities
+    Sensitivity
 
     Raises
     ------
@@ -82,7 +82,7 @@ def sensitivities(table, about=None):
     --------
     >>> import offbody as ob
     >>> mast = ob.solve(ob.circle(2.0))
-    >>> found = ob.sensitivities(ob.survey(mast, ob.PointSensor(-5.0, 0.0), [0.0]))
+    >>> found = ob.sensitivity(ob.survey(mast, ob.PointSensor(-5.0, 0.0), [0.0]))
     >>> [name for name, _ in found.parameters]
     ['sensor x', 'sensor y', 'direction', 'body 0 x', 'body 0 y', 'body 0 turn', 'body 0 size']
     >>> found.speed_ratio[0, 0].round(6) + 0.0         # of 1 - (size / x)^2
@@ -108,13 +108,13 @@ def sensitivities(table, about=None):
     names += [
         (f"body {body} {motion}", unit) for body in range(len(about)) for motion, unit in MOTIONS
     ]
-    return Sensitivities(tuple(names), *_columns(table, changes), about)
+    return Sensitivity(tuple(names), *_columns(table, changes), about)
 
 
 def _as_about(about, model):
     if about is None:
-        boxes = [np.stack([wall.min(axis=0), wall.max(axis=0)]) for wall in model.walls]
-        return np.array([box.mean(axis=0) for box in boxes])
+        middles = model._middles
+        return np.stack([middles.real, middles.imag], axis=-1)
     points = as_points("about", about)
     bodies = len(model.outlines)
     if points.shape not in ((2,), (bodies, 2)):

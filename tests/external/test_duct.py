@@ -140,3 +140,18 @@ def test_a_duct_refuses_streams_across_it_and_bodies_through_its_walls():
         ob.solve(circle, ob.Duct(-1.0, 1.0)).velocity((3.0, 0.0), 30.0)
     with pytest.raises(ob.InputError, match=r"wall y = 0\.1.*move it down"):
         ob.solve(circle, ob.Duct(-1.0, 0.1))
+
+
+@pytest.mark.parametrize("blocked", [0.1, 0.05, 0.02])
+def test_the_blockage_of_a_circle_is_that_of_its_images(blocked):
+    model = ob.solve(ob.circle(blocked), surroundings=ob.Duct(-0.5, 0.5))
+    # (pi^2/12) (d/H)^2 (Glauert; Allen and Vincenti, NACA Report 782), to its next term, (d/H)^2.
+    np.testing.assert_allclose(model.blockage([0.0, 180.0])[:, 0], np.pi**2 / 12 * blocked**2,
+                               rtol=blocked**2)
+
+
+def test_a_wake_in_a_duct_speeds_up_the_stream_far_downstream_by_its_flux():
+    model = ob.solve(ob.circle(1.0), surroundings=ob.Duct(-2.0, 2.0), wakes=ob.Wake(0.8))
+    # Continuity: Cd b/2 through a height of 4.
+    np.testing.assert_allclose(model.far_downstream(), (1.1, 0.0), rtol=0, atol=1e-12)
+    np.testing.assert_allclose(model.velocity((1e4, 1.0)), model.far_downstream(), atol=1e-12)

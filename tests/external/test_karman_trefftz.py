@@ -55,3 +55,17 @@ def test_the_surface_speed_is_exact_but_for_the_last_tenthousandth_of_the_chord(
     away = abs(z - section.edge) > 1e-4
     # Promised: 1e-4 of the undisturbed speed.
     np.testing.assert_allclose(surface.speed[away], expected[away], rtol=0, atol=1e-4)
+
+
+@CASES
+def test_the_velocity_gradient_is_exact_off_the_wall_and_behind_the_edge(section, direction):
+    ring = np.exp(2j * np.pi * np.arange(48) / 48)
+    behind = section.edge + np.array([0.02, 0.1 + 0.1j, 0.05 - 0.3j])
+    points = np.concatenate([section.offset_points(np.linspace(0.1, 0.9, 9), 0.05), behind])
+    around = section.velocity(points[:, None] + 0.01 * ring, direction)
+    slope = (around / ring).mean(axis=1) / 0.01   # Cauchy's formula, to 48 powers of a half
+    expected = np.stack([np.stack([slope.real, -slope.imag], -1),
+                         np.stack([-slope.imag, -slope.real], -1)], -2)
+    found = solved(section).velocity_gradient(exact.as_pairs(points), direction)
+    # The velocity is good to 1e-5 at 0.002 from the wall, to 1e-7 here: over 0.01, its slope.
+    np.testing.assert_allclose(found, expected, rtol=0, atol=1e-5)

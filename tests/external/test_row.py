@@ -128,3 +128,12 @@ def test_wakes_in_a_row_leave_the_stream_far_upstream_as_it_was(direction):
     np.testing.assert_allclose(before, stream, rtol=0, atol=1e-15)
     # Each wake blows Cd b/2 = 0.15 into a passage of 2.
     np.testing.assert_allclose(after, stream + [0.15 / 2, 0], rtol=0, atol=1e-14)
+
+
+def test_the_turning_far_downstream_is_the_circulation_over_the_pitch():
+    model = ob.solve(ob.circle(1.0), surroundings=ob.Row(3.0), circulation=-1.5)
+    # Kelvin's circulation round one pitch of the row: the velocity along it turns by G/pitch.
+    onset = np.array([np.cos(np.radians(20.0)), np.sin(np.radians(20.0))])
+    np.testing.assert_allclose(model.far_downstream(20.0) - onset, (0.0, -0.5), atol=1e-12)
+    np.testing.assert_allclose(model.velocity((1e4, 1.0), 20.0), model.far_downstream(20.0),
+                               atol=1e-12)
