@@ -29,7 +29,8 @@ from pathlib import Path
 from statistics import median
 from unittest.mock import patch
 
-os.environ["OMP_NUM_THREADS"] = "1"  # read by the libraries when they are loaded
+if __name__ == "__main__":
+    os.environ["OMP_NUM_THREADS"] = "1"  # read by the libraries when they are loaded
 
 import numpy as np
 from scipy.linalg import lu_factor, lu_solve

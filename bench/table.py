@@ -84,7 +84,7 @@ def markdown(run):
     """The table, and a line that names the machine."""
     rows = [COLUMNS, ("---",) * len(COLUMNS)]
     for case in run["cases"].values():
-        part = "" if case["part"] == 1 else f" (from {case['part']:.0%} of the work)"
+        part = "" if case["part"] == 1 else f" (from {100 * case['part']:.2g}% of the work)"
         error = "" if case["error"] is None else f"{case['error']:.0e}"
         rows.append((
             case["work"], case["size"], duration(case["compiled"]),

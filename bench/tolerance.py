@@ -14,7 +14,8 @@ import sys
 import time
 from pathlib import Path
 
-os.environ.setdefault("OMP_NUM_THREADS", "1")  # read by the libraries when they are loaded
+if __name__ == "__main__":
+    os.environ.setdefault("OMP_NUM_THREADS", "1")  # read by the libraries when they are loaded
 
 import numpy as np
 
