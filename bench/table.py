@@ -3,8 +3,8 @@
     pytest bench --benchmark-json=run.json && python bench/table.py run.json
 
 Prints the table as Markdown and appends one line to ``bench/history.jsonl``, unless the run was a
-quick one or ``--no-history`` is given. A ratio of a full run that is more than a fifth below that of the last
-entry of the same machine is named, and the exit status is then 1.
+quick one or ``--no-history`` is given. A ratio of a full run that is more than a fifth below that
+of the last entry of the same machine is named, and the exit status is then 1.
 """
 
 import argparse
